@@ -23,7 +23,8 @@ typedef struct mt_folder mt_folder;
  * another run is using it. */
 MT_API mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_error *err) MT_MUST_USE;
 
-/* Opens the run folder at `path` to go on with it, and locks it. EINPUT when it has no marker. */
+/* Opens the run folder at `path` to go on with it, and locks it. Temporaries (*.part) that a killed run left
+ * in it are removed. EINPUT when it has no marker, ESYSTEM when another run is using it. */
 MT_API mt_status mt_folder_resume(mt_folder **out, const char *path, mt_error *err) MT_MUST_USE;
 
 /* Opens any existing folder, unlocked: a script's own folder to read from, a run folder to report on. */
