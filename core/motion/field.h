@@ -10,8 +10,8 @@ typedef struct mt_field {
     mt_symbol *symbol; /* of kind MT_SYMBOL_FIELD; its name and grid are the field's */
     mt_grid *grid;     /* borrowed from the symbol */
     double *values;    /* grid->cells values, row-major, x fastest */
-    unsigned version;  /* raised by every write from outside a model (mt_field_touch): a model then takes the new
-                          values as its state before the next step */
+    unsigned version;  /* raised by every write from outside a model (mt_field_touch): a model then takes the
+                          new  values as its state before the next step */
 } mt_field;
 
 /* A field of zeros with one reference. */
@@ -23,14 +23,14 @@ MT_API void mt_field_unref(mt_field **field);
 /* Tells models that the values were changed by hand. */
 MT_API void mt_field_touch(mt_field *field);
 
-/* Evaluates any expression over the grid: spectral operators by transforms, everything else by compiled kernels.
- * fields: n fields whose present values stand for their symbols (all that occur in e). out: cells doubles, may be the
- * values of one of the fields. The sweeper belongs to the grid. */
-MT_API mt_status mt_evaluate(mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[], double time,
-                             double *out, mt_error *err) MT_MUST_USE;
+/* Evaluates any expression over the grid: spectral operators by transforms, everything else by compiled
+ * kernels. fields: n fields whose present values stand for their symbols (all that occur in e). out: cells
+ * doubles, may be the values of one of the fields. The sweeper belongs to the grid. */
+MT_API mt_status mt_evaluate(mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[],
+                             double time, double *out, mt_error *err) MT_MUST_USE;
 
 /* field := e (coordinates, noise, params, other fields), then mt_field_touch. fields/n as in mt_evaluate. */
-MT_API mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[],
-                              double time, mt_error *err) MT_MUST_USE;
+MT_API mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, int n,
+                              mt_field *const fields[], double time, mt_error *err) MT_MUST_USE;
 
 #endif

@@ -4,16 +4,10 @@
 #include <string.h>
 
 #include "core/base/memory.h"
+#include "core/base/vector.h"
 
 #define MOST_LEAVES 256
 #define MOST_FACTORS 256
-
-/* The hot loops are compiled for several instruction sets; without contraction all give the same bits. */
-#if defined(__x86_64__) && defined(__linux__) && !defined(__SANITIZE_ADDRESS__)
-#define MT_VECTOR_CLONES __attribute__((target_clones("avx512f", "avx2", "default")))
-#else
-#define MT_VECTOR_CLONES
-#endif
 
 mt_status mt_program_begin(mt_program *p, mt_forms *forms, mt_sweeper *sweeper, int fields,
                            mt_symbol **symbols, mt_error *err) {
@@ -30,6 +24,12 @@ static void free_list(double **list, int n) {
     mt_free(list);
 }
 
+void mt_factors_end(mt_factors *f) {
+    mt_free(f->e), mt_free(f->table);
+    mt_kernel_free(&f->kernel);
+    memset(f, 0, sizeof *f);
+}
+
 void mt_program_end(mt_program *p) {
     for (int s = 0; s < p->stages; s++) {
         if (p->stage) {
@@ -37,10 +37,7 @@ void mt_program_end(mt_program *p) {
             mt_free(t->in), mt_free(t->out), mt_free(t->in_parity), mt_free(t->out_parity);
             mt_kernel_free(&t->kernel);
         }
-        if (p->factors) {
-            mt_free(p->factors[s].e), mt_free(p->factors[s].table);
-            mt_kernel_free(&p->factors[s].kernel);
-        }
+        if (p->factors) { mt_factors_end(&p->factors[s]); }
     }
     mt_free(p->stage), mt_free(p->factors);
     free_list(p->work, p->works);
@@ -211,7 +208,7 @@ static bool add_tables(mt_factors *f, const mt_expr *e) {
     return true;
 }
 
-static mt_status compile_factors(mt_program *p, mt_factors *f) {
+mt_status mt_program_compile_factors(mt_program *p, mt_factors *f) {
     for (int i = 0; i < f->n; i++)
         if (!add_tables(f, f->e[i])) return no_memory(p);
     mt_kernel_spec spec = {.nin = f->tables, .in = f->table, .nout = f->n, .out = f->e};
@@ -241,7 +238,7 @@ mt_status mt_program_compile(mt_program *p) {
     mt_status st = p->split.build.status;
     for (int i = 0; i < p->stages && !st; i++) {
         st = compile_stage(p, i);
-        if (!st) st = compile_factors(p, &p->factors[i]);
+        if (!st) st = mt_program_compile_factors(p, &p->factors[i]);
     }
     return st;
 }
@@ -401,8 +398,8 @@ void mt_program_hold(const mt_program *p, int sweep, const mt_column *c, double 
 }
 
 static const double *source_line(const mt_program *p, int sweep, const mt_term *t, const mt_column *c,
-                                 double *const in[]) {
-    if (t->source >= 0) return p->u[t->source] + c->offset;
+                                 double *const in[], double *const u[]) {
+    if (t->source >= 0) return u[t->source] + c->offset;
     int point = ~t->source;
     const mt_stage *stage = &p->stage[sweep < 0 ? 0 : sweep];
     for (int i = 0; i < stage->nout && sweep >= 0; i++)
@@ -438,7 +435,7 @@ MT_VECTOR_CLONES static void add_turned(size_t n, const double *f, double sign, 
 }
 
 void mt_program_add(const mt_program *p, int sweep, const mt_sum *sum, const mt_column *c, double *const in[],
-                    const double *lines, int skip, double *dst) {
+                    double *const u[], const double *lines, int skip, double *dst) {
     const mt_factors *f = &p->factors[sweep < 0 ? p->stages - 1 : sweep];
     size_t n = (size_t)c->length;
     for (int i = 0; i < sum->n; i++) {
@@ -446,7 +443,7 @@ void mt_program_add(const mt_program *p, int sweep, const mt_sum *sum, const mt_
         if (t->source >= 0 && t->source == skip && t->turns % 2 == 0) continue;
         int number = mt_expr_is_const(t->factor, 1) ? -1 : find_factor(f, t->factor);
         const double *line = number < 0 ? NULL : lines + (size_t)number * n,
-                     *x = source_line(p, sweep, t, c, in);
+                     *x = source_line(p, sweep, t, c, in, u);
         double sign = t->turns >= 2 ? -1 : 1;
         if (!p->spectrum->complex)
             add_real(n, line, sign, x, dst);
@@ -458,17 +455,17 @@ void mt_program_add(const mt_program *p, int sweep, const mt_sum *sum, const mt_
 }
 
 void mt_program_quantities(const mt_program *p, int stage, int sweep, const mt_column *c, double *const in[],
-                           const double *lines, double *const out[]) {
+                           double *const u[], const double *lines, double *const out[]) {
     const mt_stage *t = &p->stage[stage];
     size_t bytes = (size_t)c->length * (p->spectrum->complex ? 2 : 1) * sizeof(double);
     for (int i = 0; i < t->nin; i++) {
         const mt_sum *sum = &p->split.quantity[t->in[i]].sum;
         if (sum->n == 1 && sum->term[0].turns == 0 && mt_expr_is_const(sum->term[0].factor, 1)) {
-            memcpy(out[i], source_line(p, sweep, &sum->term[0], c, in), bytes);
+            memcpy(out[i], source_line(p, sweep, &sum->term[0], c, in, u), bytes);
             continue;
         }
         memset(out[i], 0, bytes);
-        mt_program_add(p, sweep, sum, c, in, lines, -1, out[i]);
+        mt_program_add(p, sweep, sum, c, in, u, lines, -1, out[i]);
     }
 }
 
@@ -485,7 +482,7 @@ static mt_status column_body(void *ctx, const mt_column *c, double *const in[], 
     (void)err;
     double *lines = mt_program_factor_lines(p, x->sweep < 0 ? last : x->sweep, c, worker);
     if (x->sweep >= 0) mt_program_hold(p, x->sweep, c, in);
-    mt_program_quantities(p, x->sweep + 1, x->sweep, c, in, lines, out);
+    mt_program_quantities(p, x->sweep + 1, x->sweep, c, in, p->u, lines, out);
     return MT_OK;
 }
 

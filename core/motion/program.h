@@ -70,6 +70,10 @@ int mt_program_factor(mt_program *p, int sweep, const mt_expr *factor);
 
 mt_status mt_program_compile(mt_program *p);
 
+/* A list of factors of the caller's own (e, n filled in) gets its kernel; free with mt_factors_end. */
+mt_status mt_program_compile_factors(mt_program *p, mt_factors *f);
+void mt_factors_end(mt_factors *f);
+
 /* Allocates work arrays, held spectra and scratch (column_doubles: what the stepper's column body wants per
  * worker on top). */
 mt_status mt_program_allocate(mt_program *p, size_t column_doubles);
@@ -94,12 +98,12 @@ void mt_program_factors_at(const mt_program *p, const mt_factors *f, const mt_ke
                            const mt_column *c, double *lines, double *kernel_scratch);
 /* Keeps the spectra that later sweeps need. */
 void mt_program_hold(const mt_program *p, int sweep, const mt_column *c, double *const in[]);
-/* dst += sum (dst: one line, zeroed by the caller). in: lines of the points of stage `sweep`. skip: a field
- * whose own terms with even turns are left out (-1: none). */
+/* dst += sum (dst: one line, zeroed by the caller). in: lines of the points of stage `sweep`; u: the fields'
+ * spectra. skip: a field whose own terms with even turns are left out (-1: none). */
 void mt_program_add(const mt_program *p, int sweep, const mt_sum *sum, const mt_column *c, double *const in[],
-                    const double *lines, int skip, double *dst);
+                    double *const u[], const double *lines, int skip, double *dst);
 /* Fills out[] with the quantities of stage 0 from the fields' spectra. */
 void mt_program_quantities(const mt_program *p, int stage, int sweep, const mt_column *c, double *const in[],
-                           const double *lines, double *const out[]);
+                           double *const u[], const double *lines, double *const out[]);
 
 #endif

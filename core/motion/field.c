@@ -1,0 +1,155 @@
+#include "core/motion/field.h"
+
+#include <string.h>
+
+#include "core/base/memory.h"
+#include "core/motion/program.h"
+
+mt_status mt_field_new(mt_field **out, mt_forms *forms, mt_grid *grid, const char *name, mt_error *err) {
+    mt_field *f;
+    mt_status st = mt_new(&f, 1, sizeof *f, "a field", err);
+    *out = NULL;
+    if (st) return st;
+    f->refs = 1;
+    st = mt_symbol_new(&f->symbol, forms, MT_SYMBOL_FIELD, name, grid, err);
+    if (!st) st = mt_new(&f->values, grid->cells, sizeof(double), "the values of a field", err);
+    if (st) {
+        mt_field_unref(&f);
+        return mt_context(err, st, "field '%s'", name);
+    }
+    f->grid = f->symbol->grid;
+    *out = f;
+    return MT_OK;
+}
+
+mt_field *mt_field_ref(mt_field *field) {
+    field->refs++;
+    return field;
+}
+
+void mt_field_unref(mt_field **field) {
+    mt_field *f = *field;
+    *field = NULL;
+    if (!f || --f->refs > 0) return;
+    mt_free(f->values);
+    mt_symbol_unref(&f->symbol);
+    mt_free(f);
+}
+
+void mt_field_touch(mt_field *field) {
+    field->version++;
+}
+
+/* --- evaluation
+ * ---------------------------------------------------------------------------------------------------------
+ */
+
+/* The fields that e needs in real space and the kernel that makes e from them: no transform, so no mode is
+ * projected out. */
+typedef struct plain_ctx {
+    const mt_kernel *kernel;
+    const mt_grid *grid;
+    int n;
+    const double *const *in;
+    double *out;
+    double **scratch;
+} plain_ctx;
+
+#define PLAIN_CELLS 16384
+
+static mt_status plain_job(void *ctx, size_t index, int worker, mt_error *err) {
+    plain_ctx *x = ctx;
+    size_t first = index * PLAIN_CELLS, n = x->grid->cells - first;
+    const double *in[64];
+    double *out[1] = {x->out + first};
+    mt_place place = {.grid = x->grid, .first = first};
+    (void)err;
+    if (n > PLAIN_CELLS) n = PLAIN_CELLS;
+    for (int i = 0; i < x->n; i++) in[i] = x->in[i] + first;
+    mt_kernel_run(x->kernel, &place, n, in, out, NULL, x->scratch[worker]);
+    return MT_OK;
+}
+
+static mt_status evaluate_plain(mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[],
+                                double time, double *out, mt_error *err) {
+    mt_pool *pool = mt_sweeper_pool(sweeper);
+    int workers = mt_pool_threads(pool), used = 0;
+    const mt_expr *leaf[64];
+    const double *in[64];
+    plain_ctx x = {.grid = mt_sweeper_grid(sweeper), .in = in, .out = out};
+    mt_kernel *kernel = NULL;
+    int leaves = mt_split_leaves(e, leaf, 64);
+    if (leaves < 0) return mt_fail(err, MT_ENOMEM, "no memory for an expression");
+    if (leaves > 64) return mt_fail(err, MT_EUNSUPPORTED, "an expression with more than 64 fields");
+    for (int i = 0; i < leaves; i++)
+        for (int f = 0; f < n; f++)
+            if (fields[f]->symbol == leaf[i]->symbol) leaf[used] = leaf[i], in[used++] = fields[f]->values;
+    mt_kernel_spec spec = {.nin = used, .in = leaf, .nout = 1, .out = &e};
+    mt_status st = mt_kernel_new(&kernel, &spec, err);
+    if (!st) st = mt_kernel_prepare(kernel, time, err);
+    if (!st) st = mt_new(&x.scratch, (size_t)workers, sizeof *x.scratch, "scratch memory", err);
+    for (int i = 0; i < workers && !st; i++)
+        st = mt_new(&x.scratch[i], mt_kernel_scratch(kernel), sizeof(double), "scratch memory", err);
+    x.kernel = kernel, x.n = used;
+    if (!st) st = mt_pool_run(pool, (x.grid->cells + PLAIN_CELLS - 1) / PLAIN_CELLS, plain_job, &x, err);
+    for (int i = 0; i < workers && x.scratch; i++) mt_free(x.scratch[i]);
+    mt_free(x.scratch);
+    mt_kernel_free(&kernel);
+    return st;
+}
+
+static mt_status run_staged(mt_program *p, int n, mt_field *const fields[], double time, mt_error *err) {
+    mt_status st = MT_OK;
+    for (int f = 0; f < n && !st; f++) {
+        st = mt_new(&p->u[f], p->spectrum->doubles, sizeof(double), "a spectrum", err);
+        if (!st) st = mt_transform_forward(p->sweeper, fields[f]->values, 0, p->u[f], p->work[0], err);
+    }
+    if (!st) st = mt_program_columns(p, -1, time, err);
+    for (int s = 0; s < p->stages && !st; s++) {
+        st = mt_program_rows(p, s, time, err);
+        if (!st && s + 1 < p->stages) st = mt_program_columns(p, s, time, err);
+    }
+    for (int f = 0; f < n; f++) mt_free(p->u[f]);
+    return st;
+}
+
+static mt_status evaluate_staged(mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[],
+                                 double time, double *out, mt_error *err) {
+    mt_program p;
+    mt_symbol **symbols;
+    mt_status st = mt_new(&symbols, (size_t)n + 1, sizeof *symbols, "an expression", err);
+    if (st) return st;
+    for (int i = 0; i < n; i++) symbols[i] = fields[i]->symbol;
+    st = mt_program_begin(&p, e->forms, sweeper, n, symbols, err);
+    if (!st)
+        p.direct = mt_build_collect(&p.split.build, mt_build_expand(&p.split.build, e, p.split.grid->dim));
+    if (!st) st = p.direct ? mt_split_needs(&p.split, p.direct, &p.direct_stage) : p.split.build.status;
+    if (!st) st = mt_program_finish(&p, 0, NULL);
+    if (!st) st = mt_program_compile(&p);
+    if (!st && p.works == 0) p.works = 1;
+    if (!st) st = mt_program_allocate(&p, 0);
+    p.direct_out = out;
+    if (!st) st = run_staged(&p, n, fields, time, err);
+    mt_program_end(&p);
+    mt_free(symbols);
+    return st;
+}
+
+mt_status mt_evaluate(mt_sweeper *sweeper, const mt_expr *e, int n, mt_field *const fields[], double time,
+                      double *out, mt_error *err) {
+    mt_grid *grid = NULL;
+    mt_status st = mt_expr_grid(e, &grid, err);
+    if (st) return st;
+    if (grid && !mt_grid_equal(grid, mt_sweeper_grid(sweeper)))
+        return mt_fail(err, MT_EINPUT, "the expression's fields live on another grid");
+    if (mt_expr_contents(e) & MT_HAS_SPECTRAL) return evaluate_staged(sweeper, e, n, fields, time, out, err);
+    return evaluate_plain(sweeper, e, n, fields, time, out, err);
+}
+
+mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, int n,
+                       mt_field *const fields[], double time, mt_error *err) {
+    mt_status st = mt_evaluate(sweeper, e, n, fields, time, field->values, err);
+    if (st) return mt_context(err, st, "field '%s'", field->symbol->name);
+    mt_field_touch(field);
+    return MT_OK;
+}

@@ -1,0 +1,117 @@
+/* The inside of a model, shared by model.c (declaring), equations.c (deriving and splitting), step.c (one
+ * step), advance.c (the driver), describe.c and growth.c. */
+#ifndef MT_MOTION_MODEL_INSIDE_H
+#define MT_MOTION_MODEL_INSIDE_H
+
+#include "core/motion/model.h"
+#include "core/motion/program.h"
+#include "core/motion/stiff.h"
+
+typedef enum mt_motion {
+    MT_MOTION_STILL, /* occurs in the formulas, does not move */
+    MT_MOTION_CONSERVE,
+    MT_MOTION_RELAX,
+    MT_MOTION_EVOLVE
+} mt_motion;
+
+/* A coefficient that varies over the cells, dominated in the implicit part by scale * o(k). */
+typedef struct mt_dominate {
+    mt_symbol *scale; /* private param: theta * max over cells of a */
+    int reduction;    /* max of a */
+    const mt_expr *o;
+} mt_dominate;
+
+typedef struct mt_mover {
+    mt_field *field;
+    mt_motion motion;
+    const mt_expr *given; /* mobility, rate or right-hand side; owned */
+    /* derived (kept by the program's builder) */
+    const mt_expr *node, *potential, *rhs;
+    mt_sum sum;
+    const mt_expr *linear;              /* L(k): own linear terms */
+    const mt_expr *implicit;            /* Lambda(k) <= 0: the part taken implicitly */
+    int linear_factor, implicit_factor; /* in the last column sweep; -1: constant 1, -2: constant 0 */
+    int dominates;
+    mt_dominate *dominate;
+    int mobility_reduction; /* min of the mobility or rate; -1 if it is uniform */
+    int finite_reduction;   /* min of the field, to see NaN; -1 if the energy shows it */
+    /* running */
+    double *u, *um, *r; /* spectra: present, before (then: next), explicit part of the step before */
+    unsigned version;
+    double mean_start;
+} mt_mover;
+
+/* volume * sum over modes of weight q(k) |u^|^2 */
+typedef struct mt_quadratic {
+    int mover;
+    const mt_expr *q;
+    int factor;
+} mt_quadratic;
+
+typedef enum mt_history {
+    MT_HISTORY_NONE,  /* stage-0 outputs belong to u: a one-step method from fresh right-hand sides */
+    MT_HISTORY_STEP,  /* um and r hold the step before: two-step method */
+    MT_HISTORY_STORED /* a step was rejected: one-step method from u and r, nothing is evaluated anew */
+} mt_history;
+
+struct mt_model {
+    mt_forms *forms;
+    mt_grid *grid;
+    mt_pool *pool;
+    mt_sweeper *sweeper;
+    const mt_expr *energy; /* owned */
+    int n, room;
+    mt_mover *mover;
+    /* derived */
+    bool derived;
+    mt_symbol **symbol; /* [n] */
+    mt_program program;
+    int quadratics;
+    mt_quadratic *quadratic;
+    const mt_expr *energy_rest; /* cell-wise part of the energy, or NULL */
+    int energy_reduction;       /* -1: none */
+    bool energy_known;          /* energy = reduction + quadratics */
+    int logs;
+    int *log_reduction; /* min of the arguments of logarithms */
+    int params;
+    mt_symbol **param;         /* every param in the equations (not the private ones) */
+    mt_factors linear_factors; /* the L's alone, for the middle of a step while params move */
+    size_t column_doubles;
+    /* running */
+    bool started;
+    mt_step_options options;
+    mt_run_state state;
+    mt_history history;
+    double dt_old;  /* step before */
+    double dt_next; /* suggested */
+    double ratio_old;
+    bool after_jump;      /* stage-0 outputs are older than a jump of the params: evaluate anew */
+    double *column_tally; /* [columns * (3 n + 1)]: error, change, norm per mover; quadratic energy */
+    double *totals;       /* [3 n + 1] */
+    double **next;        /* [n]: spectra that an attempt writes */
+    double energy_now;    /* of the state last swept */
+};
+
+/* equations.c */
+mt_status mt_model_derive(mt_model *m,
+                          mt_error *err); /* potentials, right-hand sides, split, program; idempotent */
+void mt_model_forget(mt_model *m);        /* undoes derive and start */
+
+/* step.c: one attempt from state.time to time_next. Leaves u+ in um (swapped in by mt_step_accept). */
+typedef struct mt_attempt {
+    double time, dt, time_next;
+    bool lands_before_jump; /* params at time_next take their value before a jump there */
+    bool capture;           /* field values are wanted at time_next */
+    /* results */
+    double ratio; /* error / allowed */
+    bool swept;   /* stage 0 was evaluated at u+ */
+} mt_attempt;
+mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err);
+void mt_step_accept(mt_model *m);
+mt_status mt_step_refresh(mt_model *m, bool capture,
+                          mt_error *err);         /* stage 0 of the present u at state.time */
+double mt_step_fastest(mt_model *m, double time); /* max over modes and fields of |L|, |Lambda| */
+double mt_step_energy(const mt_model *m);         /* from the last stage-0 sweep and quadratic tallies */
+void mt_step_params(mt_model *m, double time, bool before_jump);
+
+#endif
