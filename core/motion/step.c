@@ -101,6 +101,7 @@ MT_VECTOR_CLONES static double quadratic_line(const double *q, const double *wei
 typedef struct column_ctx {
     mt_model *m;
     scheme s;
+    bool history;        /* um and r hold the step before */
     bool fresh;          /* right-hand sides come from the sweep; else from r */
     bool moving;         /* params change during the step: L in its middle differs */
     bool update;         /* false: only the quadratic energy and quantities of the present state */
@@ -188,15 +189,10 @@ static void update_all(const column_ctx *x, const mt_column *c, double *const in
     for (int i = 0; i < m->n; i++) {
         mt_mover *v = &m->mover[i];
         if (v->motion == MT_MOTION_STILL) continue;
-        lines ln = {r->l,
-                    r->lambda,
-                    r->l,
-                    r->weight,
-                    r->rn + (size_t)i * line,
-                    v->u + c->offset,
-                    v->um + c->offset,
-                    v->r + c->offset};
-        if (!x->fresh) ln.rn = ln.r;
+        lines ln = {.l = r->l, .lambda = r->lambda, .middle = r->l, .weight = r->weight};
+        ln.u = v->u + c->offset, ln.um = v->um + c->offset, ln.r = v->r + c->offset;
+        ln.rn = x->fresh ? r->rn + (size_t)i * line : ln.r;
+        ln.uo = x->history ? ln.um : ln.u, ln.ro = x->history ? ln.r : ln.rn;
         spread(p, factor_lines, v->linear_factor, c, r->l);
         spread(p, factor_lines, v->implicit_factor, c, r->lambda);
         if (x->moving) {
