@@ -1,0 +1,171 @@
+/* Linear growth about a homogeneous state. Each right-hand side is differentiated by forward accumulation: a
+ * node carries its value in the homogeneous state and the amplitude of its response to a wave exp(i k x) of
+ * unit amplitude in one field. Spectral operators multiply the response by their symbol (d/dx by i k_x ...).
+ * This works for every equation the language can express. Cahn (Acta Metall. 9 (1961) 795) for div(M grad(f'
+ * - kappa lap c)): R = -M k^2 (f'' + kappa k^2). */
+#include "core/motion/model_inside.h"
+
+#include <complex.h>
+#include <math.h>
+#include <string.h>
+
+#include "core/base/memory.h"
+
+typedef struct dual {
+    double v;         /* value in the homogeneous state */
+    double complex d; /* response to the wave */
+} dual;
+
+typedef struct memo {
+    const mt_expr *e;
+    dual x;
+} memo;
+
+typedef struct walk {
+    const mt_model *m;
+    const double *mean, *k;
+    double time;
+    int wrt; /* field that carries the wave */
+    int n, room;
+    memo *seen;
+    mt_status status;
+    mt_error *err;
+} walk;
+
+static dual respond(walk *w, const mt_expr *e);
+
+static dual leaf(walk *w, const mt_expr *e) {
+    switch (e->op) {
+    case MT_CONST_OP: return (dual){e->value, 0};
+    case MT_PARAM_OP: return (dual){e->symbol->value, 0};
+    case MT_TIME_OP: return (dual){w->time, 0};
+    case MT_FIELD_OP:
+        for (int i = 0; i < w->m->n; i++)
+            if (w->m->mover[i].field->symbol == e->symbol) return (dual){w->mean[i], i == w->wrt ? 1 : 0};
+        break;
+    default: break;
+    }
+    w->status = mt_fail(w->err, MT_EUNSUPPORTED,
+                        "the equations depend on position: there is no homogeneous state to grow waves from");
+    return (dual){0, 0};
+}
+
+static dual power(dual a, dual b) {
+    double v = pow(a.v, b.v);
+    double complex d = b.v == 0 ? 0 : b.v * pow(a.v, b.v - 1) * a.d;
+    if (b.d != 0) d += v * log(a.v) * b.d;
+    return (dual){v, d};
+}
+
+/* Value and slope of the extended logarithm and its derivatives (expr.h). */
+static dual logarithm(mt_op op, dual a) {
+    const double c = MT_LOG_CUT;
+    double t = (a.v - c) / c;
+    bool in = a.v >= c;
+    double log_ = in ? log(a.v) : log(c) + t - t * t / 2;
+    double d1 = in ? 1 / a.v : 1 / c - t / c, d2 = in ? -1 / (a.v * a.v) : -1 / (c * c);
+    double d3 = in ? 2 / (a.v * a.v * a.v) : 0;
+    if (op == MT_LOG_OP) return (dual){log_, d1 * a.d};
+    if (op == MT_DLOG_OP) return (dual){d1, d2 * a.d};
+    return (dual){d2, d3 * a.d};
+}
+
+static dual unary(mt_op op, dual a) {
+    double v;
+    switch (op) {
+    case MT_NEG_OP: return (dual){-a.v, -a.d};
+    case MT_EXP_OP: v = exp(a.v); return (dual){v, v * a.d};
+    case MT_SQRT_OP: v = sqrt(a.v); return (dual){v, a.d / (2 * v)};
+    case MT_SIN_OP: return (dual){sin(a.v), cos(a.v) * a.d};
+    case MT_COS_OP: return (dual){cos(a.v), -sin(a.v) * a.d};
+    case MT_TANH_OP: v = tanh(a.v); return (dual){v, (1 - v * v) * a.d};
+    case MT_ABS_OP: return (dual){fabs(a.v), (a.v > 0 ? 1 : a.v < 0 ? -1 : 0) * a.d};
+    case MT_SIGN_OP: return (dual){a.v > 0 ? 1 : a.v < 0 ? -1 : 0, 0};
+    default: return logarithm(op, a);
+    }
+}
+
+static dual binary(mt_op op, dual a, dual b) {
+    switch (op) {
+    case MT_ADD_OP: return (dual){a.v + b.v, a.d + b.d};
+    case MT_SUB_OP: return (dual){a.v - b.v, a.d - b.d};
+    case MT_MUL_OP: return (dual){a.v * b.v, a.d * b.v + a.v * b.d};
+    case MT_DIV_OP: return (dual){a.v / b.v, (a.d - a.v / b.v * b.d) / b.v};
+    case MT_MIN_OP: return a.v <= b.v ? a : b;
+    case MT_MAX_OP: return a.v >= b.v ? a : b;
+    case MT_ABOVE_OP: return (dual){a.v > b.v, 0};
+    default: return power(a, b);
+    }
+}
+
+static double filter_at_zero(const mt_expr *e) {
+    return e->symbol->table ? e->symbol->table[0] : 0;
+}
+
+/* Spectral operators take a constant to 0 (FILTER: to its value times the table at k = 0). */
+static dual spectral(walk *w, const mt_expr *e, dual a) {
+    double k2 = w->k[0] * w->k[0] + w->k[1] * w->k[1] + w->k[2] * w->k[2];
+    if (e->op == MT_DERIV_OP) return (dual){0, I * w->k[e->axis] * a.d};
+    if (e->op == MT_LAPLACIAN_OP) return (dual){0, -k2 * a.d};
+    w->status = mt_fail(w->err, MT_EUNSUPPORTED, "growth of waves with a filter in the equations");
+    return (dual){a.v * filter_at_zero(e), 0};
+}
+
+static dual compute(walk *w, const mt_expr *e) {
+    dual a[3] = {{0, 0}, {0, 0}, {0, 0}};
+    if (!e->nargs) return leaf(w, e);
+    for (int i = 0; i < e->nargs; i++) a[i] = respond(w, e->arg[i]);
+    if (mt_op_spectral(e->op)) return spectral(w, e, a[0]);
+    if (e->op == MT_GRADSQ_OP) return (dual){0, 0};
+    if (e->op == MT_WHERE_OP) return a[0].v != 0 ? a[1] : a[2];
+    return e->nargs == 1 ? unary(e->op, a[0]) : binary(e->op, a[0], a[1]);
+}
+
+static dual respond(walk *w, const mt_expr *e) {
+    for (int i = 0; i < w->n; i++)
+        if (w->seen[i].e == e) return w->seen[i].x;
+    dual x = compute(w, e);
+    if (w->n == w->room) {
+        int room = w->room ? 2 * w->room : 64;
+        memo *more = mt_resize(w->seen, (size_t)room, sizeof *more);
+        if (!more) {
+            w->status = mt_fail(w->err, MT_ENOMEM, "no memory for the growth of waves");
+            return x;
+        }
+        w->seen = more;
+        w->room = room;
+    }
+    w->seen[w->n++] = (memo){e, x};
+    return x;
+}
+
+/* Larger real part of the eigenvalues of a 2 x 2 matrix. */
+static double largest_of_two(const double complex a[2][2]) {
+    double complex half = (a[0][0] + a[1][1]) / 2, det = a[0][0] * a[1][1] - a[0][1] * a[1][0];
+    double complex root = csqrt(half * half - det);
+    return fmax(creal(half + root), creal(half - root));
+}
+
+mt_status mt_model_growth(mt_model *m, const double mean[], const double k[3], double time, double *rate,
+                          mt_error *err) {
+    double complex a[2][2] = {{0, 0}, {0, 0}};
+    int moving[2], n = 0;
+    mt_status st = mt_model_derive(m, err);
+    *rate = 0;
+    if (st) return st;
+    for (int i = 0; i < m->n; i++) {
+        if (m->mover[i].motion == MT_MOTION_STILL) continue;
+        if (n == 2) return mt_fail(err, MT_EUNSUPPORTED, "growth of waves with more than two moving fields");
+        moving[n++] = i;
+    }
+    walk w = {.m = m, .mean = mean, .k = k, .time = time, .err = err};
+    mt_step_params(m, time, false);
+    for (int j = 0; j < n; j++) {
+        w.wrt = moving[j];
+        w.n = 0;
+        for (int i = 0; i < n && !w.status; i++) a[i][j] = respond(&w, m->mover[moving[i]].rhs).d;
+    }
+    mt_free(w.seen);
+    *rate = n == 1 ? creal(a[0][0]) : largest_of_two(a);
+    return w.status;
+}
