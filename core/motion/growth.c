@@ -140,7 +140,7 @@ static dual respond(walk *w, const mt_expr *e) {
 }
 
 /* Larger real part of the eigenvalues of a 2 x 2 matrix. */
-static double largest_of_two(const double complex a[2][2]) {
+static double largest_of_two(double complex a[2][2]) {
     double complex half = (a[0][0] + a[1][1]) / 2, det = a[0][0] * a[1][1] - a[0][1] * a[1][0];
     double complex root = csqrt(half * half - det);
     return fmax(creal(half + root), creal(half - root));
