@@ -114,7 +114,11 @@ static void letters_within(canvas *c, int x, int y, int dot, const char *text, i
 
 /* ---- where everything goes ---- */
 
-enum { TICKS_MOST = 24, LABEL = 20 }; /* LABEL: characters of a key's number that get room */
+enum { TICKS_MOST = 24, TITLE_WHOLE = 60 }; /* TITLE_WHOLE: letters of a title that are never cut */
+
+static int larger(int a, int b) {
+    return a > b ? a : b;
+}
 
 typedef struct layout {
     section s;
@@ -127,6 +131,7 @@ typedef struct layout {
     double bar; /* length of the bar; 0: none */
     int bar_w;
     char bar_text[MT_NUMBER_ROOM];
+    int title_y, title_w;
     int width, height;
 } layout;
 
@@ -168,7 +173,7 @@ static void key_number(const layout *l, int i, char text[MT_NUMBER_ROOM]) {
     if (l->ticks)
         mt_number_tick(l->tick + i * l->step, l->step, text);
     else
-        mt_number_tick(l->low, fabs(l->low) * 1e-5, text);
+        snprintf(text, MT_NUMBER_ROOM, "%.6g", l->low);
 }
 
 static int key_labels_width(const layout *l) {
@@ -182,23 +187,38 @@ static int key_labels_width(const layout *l) {
     return most;
 }
 
+/* Ticks about 26 dots apart, yet three of them where 1-2-5 steps allow: fewer tell no scale. */
+static void choose_ticks(layout *l) {
+    int wanted = l->key_h / (26 * l->dot);
+    for (int more = wanted < 2 ? 2 : wanted; more < wanted + 8; more++) {
+        l->ticks = mt_number_ticks(l->low, l->high, more, &l->tick, &l->step);
+        if (l->ticks >= 3) break;
+    }
+    if (l->ticks > TICKS_MOST) l->ticks = TICKS_MOST;
+}
+
 static void place_all(layout *l, const mt_picture *p) {
-    int d = l->dot, margin = 6 * d, head = p->title || p->quantity ? 15 * d : 0;
+    int d = l->dot, margin = 6 * d, title = p->title ? text_width(p->title, d) : 0;
+    bool two =
+        title > l->w && p->quantity; /* a title too long to stand beside the quantity gets its own line */
     l->x = margin;
-    l->y = margin + head;
+    l->y = margin + (p->title || p->quantity ? 17 * d : 0) + (two ? 13 * d : 0);
+    l->title_y = margin + 2 * d;
     l->key_w = 8 * d;
     l->key_h = l->h > 64 * d ? l->h : 64 * d;
     l->key_x = l->x + l->w + 7 * d;
     l->key_y = l->y;
-    int wanted = l->key_h / (26 * d);
-    l->ticks = mt_number_ticks(l->low, l->high, wanted < 2 ? 2 : wanted, &l->tick, &l->step);
-    if (l->ticks > TICKS_MOST) l->ticks = TICKS_MOST;
+    choose_ticks(l);
     int key = l->key_w + 5 * d + key_labels_width(l), quantity = p->quantity ? text_width(p->quantity, d) : 0;
-    int right = l->key_x + (key > quantity ? key : quantity), bar_right = l->x + l->bar_w + 5 * d;
+    int right = l->key_x + larger(key, quantity), bar_right = l->x + l->bar_w + 5 * d;
     if (l->bar > 0) bar_right += text_width(l->bar_text, d);
-    int below = l->h + (l->bar > 0 ? 13 * d : 0), key_below = l->key_h;
-    l->width = (right > bar_right ? right : bar_right) + margin;
-    l->height = l->y + (below > key_below ? below : key_below) + margin;
+    if (bar_right > right) right = bar_right;
+    int longest = TITLE_WHOLE * MT_GLYPH_PITCH * d;
+    if (two || !p->quantity) right = larger(right, l->x + (title < longest ? title : longest));
+    l->title_w = two || !p->quantity ? right - l->x : l->w;
+    int below = l->h + (l->bar > 0 ? 13 * d : 0);
+    l->width = right + margin;
+    l->height = l->y + larger(below, l->key_h) + margin;
 }
 
 /* ---- drawing ---- */
@@ -238,7 +258,7 @@ static void draw_key(canvas *c, const layout *l, const mt_picture *p, uint8_t ma
         fill(c, l->key_x + l->key_w + l->line, y - (l->line - 1) / 2, 2 * d, l->line, ink);
         letters(c, l->key_x + l->key_w + 5 * d, y - 3 * d, d, text);
     }
-    if (p->quantity) letters(c, l->key_x, l->y - 13 * d, d, p->quantity);
+    if (p->quantity) letters(c, l->key_x, l->y - 15 * d, d, p->quantity);
 }
 
 static void draw_bar(canvas *c, const layout *l) {
@@ -295,7 +315,7 @@ mt_status mt_picture_draw(const mt_picture *p, int dim, const int n[], const dou
         frame(&c, l.x, l.y, l.w, l.h, l.line);
         draw_key(&c, &l, p, map);
         if (l.bar > 0) draw_bar(&c, &l);
-        if (p->title) letters_within(&c, l.x, l.y - 13 * l.dot, l.dot, p->title, l.w);
+        if (p->title) letters_within(&c, l.x, l.title_y, l.dot, p->title, l.title_w);
     }
     *width = c.width;
     *height = c.height;

@@ -21,7 +21,8 @@ typedef struct mt_picture {
     double spacing;   /* length of a cell for the bar, m when `metres`, else a plain number; 0: no bar. The
                          section   must have the same spacing along both its axes for a bar to be true */
     bool metres;
-    const char *title; /* UTF-8, for example "first ageing, 3.2 h"; NULL: none. Cut with "..." to the width */
+    const char *title; /* UTF-8, for example "first ageing, 3.2 h"; NULL: none. Over 60 letters it may be cut
+                          with "..." */
     const char *quantity; /* above the key, for example "x" or "c [1]"; NULL: none */
 } mt_picture;
 
