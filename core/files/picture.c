@@ -138,8 +138,8 @@ typedef struct layout {
 static int choose_scale(const mt_picture *p, const section *s) {
     int longer = s->nx > s->ny ? s->nx : s->ny;
     if (p->scale) return p->scale;
-    int scale = (511 + longer) / longer;
-    return scale < 1 ? 1 : scale > 64 ? 64 : scale;
+    int scale = longer >= 512 ? 1 : (511 + longer) / longer;
+    return scale > 64 ? 64 : scale;
 }
 
 static mt_status size_cells(layout *l, const mt_picture *p, int dim, mt_error *err) {
