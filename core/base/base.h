@@ -26,7 +26,11 @@
 #define MT_BLOCK 8
 #endif
 
-static inline size_t mt_max_size(size_t a, size_t b) { return a > b ? a : b; }
-static inline size_t mt_round_up(size_t n, size_t to) { return (n + to - 1) / to * to; }
+static inline size_t mt_max_size(size_t a, size_t b) {
+    return a > b ? a : b;
+}
+static inline size_t mt_round_up(size_t n, size_t to) {
+    return (n + to - 1) / to * to;
+}
 
 #endif

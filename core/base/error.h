@@ -1,8 +1,8 @@
 /* Status codes and the error record.
  *
- * Every function that can fail returns an mt_status that must be used and takes an mt_error* last (NULL is allowed:
- * the text is then lost). The innermost function fills the record with mt_fail; callers on the way up put what they
- * know in front with mt_context ("field c: ..."). Core never prints and never exits. */
+ * Every function that can fail returns an mt_status that must be used and takes an mt_error* last (NULL is
+ * allowed: the text is then lost). The innermost function fills the record with mt_fail; callers on the way
+ * up put what they know in front with mt_context ("field c: ..."). Core never prints and never exits. */
 #ifndef MT_BASE_ERROR_H
 #define MT_BASE_ERROR_H
 
@@ -33,9 +33,10 @@ MT_API mt_status mt_fail(mt_error *err, mt_status status, const char *format, ..
 MT_API mt_status mt_context(mt_error *err, mt_status status, const char *format, ...) MT_PRINTF(3, 4);
 
 /* A check for a caller's misuse that stays in release builds: fails with EINPUT naming the condition. */
-#define MT_REQUIRE(condition, err)                                                                                   \
-    do {                                                                                                             \
-        if (!(condition)) return mt_fail((err), MT_EINPUT, "%s: wrong call, needs %s", __func__, #condition);        \
+#define MT_REQUIRE(condition, err)                                                                           \
+    do {                                                                                                     \
+        if (!(condition))                                                                                    \
+            return mt_fail((err), MT_EINPUT, "%s: wrong call, needs %s", __func__, #condition);              \
     } while (0)
 
 #endif

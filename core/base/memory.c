@@ -20,7 +20,9 @@ static bool must_fail(void) {
     return true;
 }
 
-static header *head_of(void *block) { return (header *)((char *)block - MT_ALIGN); }
+static header *head_of(void *block) {
+    return (header *)((char *)block - MT_ALIGN);
+}
 
 static void count_in(size_t bytes) {
     size_t now = atomic_fetch_add(&used, bytes) + bytes, top = atomic_load(&peak);
@@ -72,14 +74,24 @@ char *mt_copy_text(const char *text) {
     return copy;
 }
 
-size_t mt_memory_used(void) { return atomic_load(&used); }
-size_t mt_memory_peak(void) { return atomic_load(&peak); }
-void mt_memory_reset_peak(void) { atomic_store(&peak, atomic_load(&used)); }
-size_t mt_memory_blocks(void) { return atomic_load(&blocks); }
+size_t mt_memory_used(void) {
+    return atomic_load(&used);
+}
+size_t mt_memory_peak(void) {
+    return atomic_load(&peak);
+}
+void mt_memory_reset_peak(void) {
+    atomic_store(&peak, atomic_load(&used));
+}
+size_t mt_memory_blocks(void) {
+    return atomic_load(&blocks);
+}
 
 void mt_memory_fail_at(long k) {
     atomic_store(&failed, false);
     atomic_store(&countdown, k);
 }
 
-bool mt_memory_did_fail(void) { return atomic_load(&failed); }
+bool mt_memory_did_fail(void) {
+    return atomic_load(&failed);
+}

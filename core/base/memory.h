@@ -1,5 +1,6 @@
-/* All memory of core comes from here: sizes checked against overflow, aligned to MT_ALIGN, zero-filled, counted, and
- * with a switch that makes the k-th allocation fail (tests sweep k over every public entry). Thread-safe. */
+/* All memory of core comes from here: sizes checked against overflow, aligned to MT_ALIGN, zero-filled,
+ * counted, and with a switch that makes the k-th allocation fail (tests sweep k over every public entry).
+ * Thread-safe. */
 #ifndef MT_BASE_MEMORY_H
 #define MT_BASE_MEMORY_H
 
@@ -12,8 +13,8 @@ MT_API void *mt_alloc(size_t count, size_t size);
 /* As mt_alloc, but writes the block to *out or fails with ENOMEM, naming `what` and the size wanted. */
 MT_API mt_status mt_new(void *out, size_t count, size_t size, const char *what, mt_error *err) MT_MUST_USE;
 
-/* Gives the block a new size, keeping the smaller of both contents; new bytes are zero. The old block stays valid on
- * failure (NULL returned). NULL is allowed. */
+/* Gives the block a new size, keeping the smaller of both contents; new bytes are zero. The old block stays
+ * valid on failure (NULL returned). NULL is allowed. */
 MT_API void *mt_resize(void *block, size_t count, size_t size);
 
 /* Frees; NULL is allowed. */

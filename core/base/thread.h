@@ -1,5 +1,5 @@
-/* A small pool of threads (pthreads) that runs numbered jobs. Which thread runs which job is not fixed, so a job must
- * write only to places of its own number; results then do not depend on the number of threads. */
+/* A small pool of threads (pthreads) that runs numbered jobs. Which thread runs which job is not fixed, so a
+ * job must write only to places of its own number; results then do not depend on the number of threads. */
 #ifndef MT_BASE_THREAD_H
 #define MT_BASE_THREAD_H
 
@@ -20,8 +20,8 @@ MT_API void mt_pool_free(mt_pool **pool);
 MT_API int mt_pool_threads(const mt_pool *pool);
 
 /* Runs job(ctx, 0 .. count-1) and returns when all are done; a NULL pool runs them in order in the caller.
- * Where jobs fail, the failure of the lowest index is returned, whatever the number of threads; jobs above a failed
- * index may be skipped. Not to be called from within a job. */
+ * Where jobs fail, the failure of the lowest index is returned, whatever the number of threads; jobs above a
+ * failed index may be skipped. Not to be called from within a job. */
 MT_API mt_status mt_pool_run(mt_pool *pool, size_t count, mt_job job, void *ctx, mt_error *err) MT_MUST_USE;
 
 #endif
