@@ -2,6 +2,8 @@
 #ifndef MT_TESTS_FILES_SCRATCH_H
 #define MT_TESTS_FILES_SCRATCH_H
 
+#define _GNU_SOURCE /* nftw */
+
 #include <dirent.h>
 #include <ftw.h>
 #include <stdio.h>
