@@ -224,7 +224,7 @@ static mt_status read_front(int fd, size_t size, size_t *front, size_t *length, 
 
 /* Reads the header of an open file and compares the file's length with what it promises. */
 static mt_status read_header(int fd, size_t size, mt_npy *out, reader *r) {
-    size_t front, length;
+    size_t front = 0, length = 0;
     char *text;
     mt_status status = read_front(fd, size, &front, &length, r);
     if (status) return status;

@@ -36,7 +36,11 @@ static mt_status take_section(section *s, const mt_picture *p, int dim, const in
     if (index < 0 || index >= n[p->axis])
         return mt_fail(err, MT_EINPUT, "there is no section at cell %d: the axis has cells 0 to %d", index,
                        n[p->axis] - 1);
-    *s = (section){values + (size_t)index * step[p->axis], n[a], n[b], step[a], step[b]};
+    *s = (section){.first = values + (size_t)index * step[p->axis],
+                   .nx = n[a],
+                   .ny = n[b],
+                   .step_x = step[a],
+                   .step_y = step[b]};
     return MT_OK;
 }
 
@@ -223,9 +227,14 @@ static void place_all(layout *l, const mt_picture *p) {
 
 /* ---- drawing ---- */
 
+/* Where v lies between the limits, 0 to 1; halved, since high - low may overflow. */
+static double place_of(double v, const layout *l) {
+    if (!(l->low < l->high)) return v > l->high ? 1 : v < l->low ? 0 : 0.5;
+    return v <= l->low ? 0 : v >= l->high ? 1 : (v / 2 - l->low / 2) / (l->high / 2 - l->low / 2);
+}
+
 static void colour_of(double v, const layout *l, uint8_t map[256][3], uint8_t out[3]) {
-    double t = l->high > l->low ? (v - l->low) / (l->high - l->low) : v > l->high ? 1 : v < l->low ? 0 : 0.5;
-    int i = t <= 0 ? 0 : t >= 1 ? 255 : (int)(256 * t); /* 256 equal classes */
+    int i = isnan(v) ? 0 : (int)(256 * place_of(v, l)); /* 256 equal classes */
     memcpy(out, isnan(v) ? hole : map[i > 255 ? 255 : i], 3);
 }
 
@@ -240,8 +249,7 @@ static void draw_cells(canvas *c, const layout *l, uint8_t map[256][3]) {
 }
 
 static int key_row(const layout *l, double v) {
-    double t = l->high > l->low ? (v - l->low) / (l->high - l->low) : 0.5;
-    return l->key_y + (int)lrint((1 - t) * (l->key_h - 1));
+    return l->key_y + (int)lrint((1 - place_of(v, l)) * (l->key_h - 1));
 }
 
 static void draw_key(canvas *c, const layout *l, const mt_picture *p, uint8_t map[256][3]) {

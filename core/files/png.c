@@ -77,10 +77,13 @@ static void on_flush(png_structp png) {
 
 static void set_comment(work *w) {
     char key[] = "Description";
-    png_text text = {
-        .compression = PNG_ITXT_COMPRESSION_NONE, .key = key, .text = (char *)(uintptr_t)w->comment};
-    text.itxt_length = strlen(w->comment);
-    png_set_text(w->png, w->info, &text, 1);
+    png_text entry;
+    memset(&entry, 0, sizeof entry);
+    entry.compression = PNG_ITXT_COMPRESSION_NONE;
+    entry.key = key;
+    entry.text = (char *)(uintptr_t)w->comment; /* libpng copies it */
+    entry.itxt_length = strlen(w->comment);
+    png_set_text(w->png, w->info, &entry, 1);
 }
 
 static bool write_all(work *w) {
