@@ -50,7 +50,7 @@ static inline char *slurp(const char *name, size_t *n) {
 }
 
 static inline bool file_is(const char *name, const char *text) {
-    size_t n;
+    size_t n = 0;
     char *have = slurp(name, &n);
     bool same = have && n == strlen(text) && !memcmp(have, text, n);
     free(have);

@@ -147,7 +147,7 @@ static void test_absurd_header_length(void **state) {
 static void test_cut_and_extended(void **state) {
     (void)state;
     const int n[] = {3, 2};
-    size_t size;
+    size_t size = 0;
     mt_npy a;
     assert_int_equal(mt_npy_write(NULL, "t.npy", 2, n, values, NULL), MT_OK);
     char *b = slurp("t.npy", &size);
@@ -162,7 +162,7 @@ static void test_cut_and_extended(void **state) {
 static void test_every_byte_damaged(void **state) {
     (void)state;
     const int n[] = {3, 2};
-    size_t size;
+    size_t size = 0;
     assert_int_equal(mt_npy_write(NULL, "d.npy", 2, n, values, NULL), MT_OK);
     char *b = slurp("d.npy", &size);
     for (size_t k = 0; k < size; k++)

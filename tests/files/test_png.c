@@ -26,7 +26,7 @@ static void test_written_pixels(void **state) {
     image.format = PNG_FORMAT_RGB;
     assert_true(png_image_finish_read(&image, NULL, back, 0, NULL));
     assert_memory_equal(back, rgb, sizeof rgb);
-    size_t n;
+    size_t n = 0;
     char *b = slurp("a.png", &n);
     assert_non_null(memmem(b, n, "Description", 11));
     assert_non_null(memmem(b, n, "stage 1, 2 \xC2\xB5s", 13));
@@ -114,7 +114,7 @@ static void test_kinds(void **state) {
 
 static void test_cut_anywhere(void **state) {
     (void)state;
-    size_t n;
+    size_t n = 0;
     write_kind("c.png", PNG_COLOR_TYPE_GRAY, 16, PNG_INTERLACE_NONE);
     char *b = slurp("c.png", &n);
     for (size_t k = 0; k < n; k++) {
@@ -132,7 +132,7 @@ static void test_every_byte_damaged(void **state) {
     (void)state;
     const int kinds[] = {PNG_COLOR_TYPE_GRAY, PNG_COLOR_TYPE_PALETTE, PNG_COLOR_TYPE_RGB_ALPHA};
     for (int i = 0; i < 3; i++) {
-        size_t n, blocks = mt_memory_blocks();
+        size_t n = 0, blocks = mt_memory_blocks();
         write_kind("d.png", kinds[i], i == 1 ? 4 : 8, i == 2 ? PNG_INTERLACE_ADAM7 : PNG_INTERLACE_NONE);
         char *b = slurp("d.png", &n);
         for (size_t k = 0; k < n; k++)
@@ -168,7 +168,7 @@ static void test_absurd_size(void **state) {
     (void)state;
     const uint32_t sides[][2] = {
         {30000, 30000}, {0x7fffffff, 0x7fffffff}, {40000, 1}, {0, 5}, {0xffffffff, 1}};
-    size_t n;
+    size_t n = 0;
     write_kind("s.png", PNG_COLOR_TYPE_GRAY, 8, PNG_INTERLACE_NONE);
     uint8_t *b = (uint8_t *)slurp("s.png", &n);
     for (int i = 0; i < 5; i++) {

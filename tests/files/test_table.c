@@ -176,7 +176,7 @@ static void remove_w(void) {
 }
 
 static void whole_lines(bool failed) {
-    size_t n;
+    size_t n = 0;
     char *text = slurp("w.csv", &n);
     assert_true(failed || text);
     if (text) assert_true(n > 0 && text[n - 1] == '\n');
