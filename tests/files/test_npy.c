@@ -131,6 +131,19 @@ static void test_made_up_headers(void **state) {
     }
 }
 
+/* 2^64 cells wrap to none, 2^61 to no bytes: both would fit a file without data. */
+static void test_shapes_that_wrap(void **state) {
+    (void)state;
+    const char *bad[] = {"{'descr': '<f8', 'fortran_order': False, 'shape': (2097152, 2097152, 4194304)}",
+                         "{'descr': '<f8', 'fortran_order': False, 'shape': (2097152, 1048576, 1048576)}"};
+    for (int i = 0; i < 2; i++) {
+        mt_npy a;
+        mt_error err = {0};
+        assert_int_equal(read_composed(bad[i], values, 0, &a, &err), MT_EFORMAT);
+        assert_non_null(strstr(err.text, "more than 2147483647 cells"));
+    }
+}
+
 static void test_absurd_header_length(void **state) {
     (void)state;
     const char v1[] = "\x93NUMPY\x01\x00\xff\xff{}", v2[] = "\x93NUMPY\x02\x00\xff\xff\xff\xff{}",
@@ -221,6 +234,7 @@ int main(void) {
         cmocka_unit_test(test_every_byte_damaged),
         cmocka_unit_test(test_allocations),
         cmocka_unit_test(test_failing_calls),
+        cmocka_unit_test(test_shapes_that_wrap),
     };
     return cmocka_run_group_tests(tests, scratch_begin, scratch_end);
 }
