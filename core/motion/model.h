@@ -29,7 +29,7 @@ typedef struct mt_step_options {
                          time-dependent params and densities that contain time) */
 } mt_step_options;
 
-#define MT_ACCURACY 2e-3
+#define MT_ACCURACY 1e-2
 
 /* What the run knows about itself; all are sums or extremes since mt_model_start. */
 typedef struct mt_run_state {

@@ -2,19 +2,20 @@
  *
  * Definition (the scale is part of the contract):
  *   u(x) = sum over modes of  u^_m * product over axes of  exp(i k x) (periodic) | cos(k x) (mirror, even) |
- *   sin(k x) (mirror, odd),  x measured from the centre of the first cell on periodic axes and from the wall on mirror
- *   axes, k = mt_grid_wavenumber(axis, m). So the mean of an even array is its mode 0. Index m of a mirror axis means the
- *   same wavenumber for both parities (odd arrays have 0 at m = 0; the sine mode n is projected out). The Nyquist mode
- *   m = n/2 of an even-sized periodic axis is projected out: it is always stored as 0.
+ *   sin(k x) (mirror, odd),  x measured from the centre of the first cell on periodic axes and from the wall
+ * on mirror axes, k = mt_grid_wavenumber(axis, m). So the mean of an even array is its mode 0. Index m of a
+ * mirror axis means the same wavenumber for both parities (odd arrays have 0 at m = 0; the sine mode n is
+ * projected out). The Nyquist mode m = n/2 of an even-sized periodic axis is projected out: it is always
+ * stored as 0.
  *
- * Layout: the slowest axis with n > 1 (axis 0 if none) is the *outer* axis, the others are *inner*. A spectral array
- * is stored column after column: column j belongs to one combination of inner modes and holds `length` consecutive
- * values along the outer modes, complex (re, im interleaved) or real; column j starts at double j * stride. Between
- * the two sweeps data are *mixed*: transformed along the inner axes only, in "work arrays" whose inside nobody but the
- * sweeps looks at.
+ * Layout: the slowest axis with n > 1 (axis 0 if none) is the *outer* axis, the others are *inner*. A
+ * spectral array is stored column after column: column j belongs to one combination of inner modes and holds
+ * `length` consecutive values along the outer modes, complex (re, im interleaved) or real; column j starts at
+ * double j * stride. Between the two sweeps data are *mixed*: transformed along the inner axes only, in "work
+ * arrays" whose inside nobody but the sweeps looks at.
  *
- * If any axis is periodic, spectral values are complex; one periodic axis, the first that is transformed (x before y
- * before z), is kept half: modes 0 .. n/2. If all axes are mirror, values are real. */
+ * If any axis is periodic, spectral values are complex; one periodic axis, the first that is transformed (x
+ * before y before z), is kept half: modes 0 .. n/2. If all axes are mirror, values are real. */
 #ifndef MT_SPACE_SPECTRUM_H
 #define MT_SPACE_SPECTRUM_H
 
@@ -34,9 +35,10 @@ typedef struct mt_spectrum {
     size_t stride;       /* doubles from column to column, a multiple of 8 */
     size_t doubles;      /* doubles of a spectral array */
     double *k[3];        /* k[axis][m], m < modes[axis]: wavenumber (rad per length) */
-    double *weight[3];   /* weight[axis][m] of an even array: mean(u^2) = sum of |u^_m|^2 times the product of weights:
-                            half axis 1 at m = 0 and 2 above; other periodic axes 1; mirror 1 at m = 0 and 1/2 above.
-                            (For an array that is odd along an axis, its mode 0 is stored as 0, so weights hold too.) */
+    double *weight[3];   /* weight[axis][m] of an even array: mean(u^2) = sum of |u^_m|^2 times the product of
+                            weights:   half axis 1 at m = 0 and 2 above; other periodic axes 1; mirror 1 at m = 0
+                            and 1/2 above.   (For an array that is odd along an axis, its mode 0 is stored as 0,
+                            so weights hold too.) */
 } mt_spectrum;
 
 /* Inner mode numbers of column j: modes[a] is set for every axis but the outer, 0 there. */

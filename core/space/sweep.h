@@ -1,13 +1,14 @@
-/* The two sweeps. An evaluation alternates between real space and spectrum; each sweep reads and writes every work array
- * once, line by line while the data are in cache:
+/* The two sweeps. An evaluation alternates between real space and spectrum; each sweep reads and writes every
+ * work array once, line by line while the data are in cache:
  *
- *   row sweep:     for each unit of rows: inverse transform along the inner axes, body in real space, forward transform;
- *   column sweep:  for each column: forward transform along the outer axis, body on the modes, inverse transform.
+ *   row sweep:     for each unit of rows: inverse transform along the inner axes, body in real space, forward
+ * transform; column sweep:  for each column: forward transform along the outer axis, body on the modes,
+ * inverse transform.
  *
- * Work arrays hold data that are transformed along the inner axes only. A sweep may read and write the same work
- * array (input i and output j may be one array); outputs are written after all inputs of the unit were read.
- * Everything is done unit by unit with one plan per line, so results do not depend on the number of threads.
- * FFTW is planned with FFTW_ESTIMATE: the same plans, and so the same bits, in every process. */
+ * Work arrays hold data that are transformed along the inner axes only. A sweep may read and write the same
+ * work array (input i and output j may be one array); outputs are written after all inputs of the unit were
+ * read. Everything is done unit by unit with one plan per line, so results do not depend on the number of
+ * threads. FFTW is planned with FFTW_ESTIMATE: the same plans, and so the same bits, in every process. */
 #ifndef MT_SPACE_SWEEP_H
 #define MT_SPACE_SWEEP_H
 
@@ -33,17 +34,19 @@ typedef struct mt_column {
     double weight; /* product of the inner weights */
 } mt_column;
 
-/* in[i]: values of input i in the unit's cells (may be overwritten); out[j]: to be filled. worker picks scratch. */
-typedef mt_status (*mt_row_body)(void *ctx, const mt_unit *unit, double *const in[], double *const out[], int worker,
-                                 mt_error *err);
+/* in[i]: values of input i in the unit's cells (may be overwritten); out[j]: to be filled. worker picks
+ * scratch. */
+typedef mt_status (*mt_row_body)(void *ctx, const mt_unit *unit, double *const in[], double *const out[],
+                                 int worker, mt_error *err);
 
-/* in[i]: forward-transformed column of input i, `length` values, complex interleaved if spectrum->complex, Nyquist and
- * forbidden modes already 0 (may be overwritten); out[j]: to be filled with the column to be inverse-transformed
- * (mode values at projected-out places are ignored). */
-typedef mt_status (*mt_column_body)(void *ctx, const mt_column *column, double *const in[], double *const out[],
-                                    int worker, mt_error *err);
+/* in[i]: forward-transformed column of input i, `length` values, complex interleaved if spectrum->complex,
+ * Nyquist and forbidden modes already 0 (may be overwritten); out[j]: to be filled with the column to be
+ * inverse-transformed (mode values at projected-out places are ignored). */
+typedef mt_status (*mt_column_body)(void *ctx, const mt_column *column, double *const in[],
+                                    double *const out[], int worker, mt_error *err);
 
-/* Plans and buffers for a grid; keeps a reference to the grid; pool may be NULL (serial) and must outlive the sweeper. */
+/* Plans and buffers for a grid; keeps a reference to the grid; pool may be NULL (serial) and must outlive the
+ * sweeper. */
 MT_API mt_status mt_sweeper_new(mt_sweeper **out, mt_grid *grid, mt_pool *pool, mt_error *err) MT_MUST_USE;
 MT_API void mt_sweeper_free(mt_sweeper **sweeper);
 
@@ -54,21 +57,21 @@ MT_API size_t mt_sweeper_units(const mt_sweeper *s);        /* units of a row sw
 MT_API size_t mt_sweeper_unit_cells(const mt_sweeper *s);   /* cells of the largest unit */
 MT_API size_t mt_sweeper_work_doubles(const mt_sweeper *s); /* doubles of a work array */
 
-/* in/out: nin/nout work arrays with the parity of each; either may be none (0). Fails as the lowest failing unit does, or
- * with ENOMEM when buffers must grow. */
-MT_API mt_status mt_sweep_rows(mt_sweeper *s, int nin, double *const in[], const mt_parities in_parity[], int nout,
-                               double *const out[], const mt_parities out_parity[], mt_row_body body, void *ctx,
-                               mt_error *err) MT_MUST_USE;
+/* in/out: nin/nout work arrays with the parity of each; either may be none (0). Fails as the lowest failing
+ * unit does, or with ENOMEM when buffers must grow. */
+MT_API mt_status mt_sweep_rows(mt_sweeper *s, int nin, double *const in[], const mt_parities in_parity[],
+                               int nout, double *const out[], const mt_parities out_parity[],
+                               mt_row_body body, void *ctx, mt_error *err) MT_MUST_USE;
 
-MT_API mt_status mt_sweep_columns(mt_sweeper *s, int nin, double *const in[], const mt_parities in_parity[], int nout,
-                                  double *const out[], const mt_parities out_parity[], mt_column_body body, void *ctx,
-                                  mt_error *err) MT_MUST_USE;
+MT_API mt_status mt_sweep_columns(mt_sweeper *s, int nin, double *const in[], const mt_parities in_parity[],
+                                  int nout, double *const out[], const mt_parities out_parity[],
+                                  mt_column_body body, void *ctx, mt_error *err) MT_MUST_USE;
 
-/* Whole arrays, built from the two: field array (real space) to spectral array and back. `work` is one work array.
- * field and spectrum are distinct from work. */
-MT_API mt_status mt_transform_forward(mt_sweeper *s, const double *field, mt_parities parity, double *spectrum,
-                                      double *work, mt_error *err) MT_MUST_USE;
-MT_API mt_status mt_transform_inverse(mt_sweeper *s, const double *spectrum, mt_parities parity, double *field,
-                                      double *work, mt_error *err) MT_MUST_USE;
+/* Whole arrays, built from the two: field array (real space) to spectral array and back. `work` is one work
+ * array. field and spectrum are distinct from work. */
+MT_API mt_status mt_transform_forward(mt_sweeper *s, const double *field, mt_parities parity,
+                                      double *spectrum, double *work, mt_error *err) MT_MUST_USE;
+MT_API mt_status mt_transform_inverse(mt_sweeper *s, const double *spectrum, mt_parities parity,
+                                      double *field, double *work, mt_error *err) MT_MUST_USE;
 
 #endif
