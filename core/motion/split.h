@@ -10,7 +10,7 @@
 #ifndef MT_MOTION_SPLIT_H
 #define MT_MOTION_SPLIT_H
 
-#include "core/motion/build.h"
+#include "core/formula/build.h"
 
 typedef struct mt_term {
     const mt_expr *factor; /* real: WAVE nodes, FILTER symbols, params, time, numbers */

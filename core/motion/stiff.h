@@ -6,7 +6,7 @@
 #ifndef MT_MOTION_STIFF_H
 #define MT_MOTION_STIFF_H
 
-#include "core/motion/build.h"
+#include "core/formula/build.h"
 
 typedef struct mt_stiff {
     const mt_expr *a; /* damping coefficient: the rate is -a * o; uniform or cell by cell */

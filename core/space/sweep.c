@@ -365,15 +365,19 @@ static mt_status row_job(void *ctx, size_t index, int worker, mt_error *err) {
     double *in[MOST_ARRAYS], *out[MOST_ARRAYS], *at = w->buffer[worker].at;
     size_t r0 = index * (size_t)w->rows_per_unit, r1 = r0 + (size_t)w->rows_per_unit, n = w->inner_cells;
     size_t outer = (size_t)w->grid->n[w->s.outer];
+    bool line = w->s.outer == 0; /* one axis only: mixed data are the values themselves */
     if (r1 > outer) r1 = outer;
     for (int i = 0; i < x->nin; i++, at += unit_room(w)) in[i] = at;
     for (int i = 0; i < x->nout; i++, at += unit_room(w)) out[i] = at;
-    for (int i = 0; i < x->nin; i++)
+    for (int i = 0; i < x->nin && line; i++) memcpy(in[i], x->in[i] + r0, (r1 - r0) * sizeof(double));
+    for (int i = 0; i < x->nin && !line; i++)
         for (size_t r = r0; r < r1; r++)
             slab_inverse(w, x->in_parity[i], x->in[i] + r * w->ld, in[i] + (r - r0) * n, at);
     mt_unit unit = {index, r0 * n, (r1 - r0) * n};
     mt_status st = x->row(x->ctx, &unit, in, out, worker, err);
-    for (int i = 0; i < x->nout && !st; i++)
+    for (int i = 0; i < x->nout && line && !st; i++)
+        memcpy(x->out[i] + r0, out[i], (r1 - r0) * sizeof(double));
+    for (int i = 0; i < x->nout && !line && !st; i++)
         for (size_t r = r0; r < r1; r++)
             slab_forward(w, x->out_parity[i], out[i] + (r - r0) * n, x->out[i] + r * w->ld, at);
     return st;

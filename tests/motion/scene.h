@@ -2,7 +2,7 @@
 #ifndef MT_TESTS_MOTION_SCENE_H
 #define MT_TESTS_MOTION_SCENE_H
 
-#include "core/motion/build.h"
+#include "core/formula/build.h"
 #include "core/motion/model.h"
 #include "tests/support.h"
 

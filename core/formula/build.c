@@ -1,4 +1,4 @@
-#include "core/motion/build.h"
+#include "core/formula/build.h"
 
 #include <string.h>
 

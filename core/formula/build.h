@@ -1,8 +1,8 @@
 /* Building expressions in bulk: nodes are kept alive by the builder, and the first failure sticks (later
  * calls then return NULL and do nothing), so that a derivation reads like the formula it makes. Internal to
  * core/motion. */
-#ifndef MT_MOTION_BUILD_H
-#define MT_MOTION_BUILD_H
+#ifndef MT_FORMULA_BUILD_H
+#define MT_FORMULA_BUILD_H
 
 #include "core/formula/expr.h"
 
