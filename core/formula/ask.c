@@ -94,12 +94,12 @@ mt_status mt_expr_grid(const mt_expr *e, mt_grid **grid, mt_error *err) {
  * -----------------------------------------------------------------------------------------------------------------
  */
 
-static double value_of(mt_map *seen, const mt_expr *e, double time) {
+static double value_of(const mt_expr *e, double time) {
     double a[3] = {0, 0, 0};
     if (e->op == MT_CONST_OP) return e->value;
     if (e->op == MT_PARAM_OP) return e->symbol->value;
     if (e->op == MT_TIME_OP) return time;
-    for (int i = 0; i < e->nargs; i++) a[i] = value_of(seen, e->arg[i], time);
+    for (int i = 0; i < e->nargs; i++) a[i] = value_of(e->arg[i], time);
     return mt_op_apply(e->op, a);
 }
 
@@ -109,7 +109,7 @@ mt_status mt_expr_number(const mt_expr *e, double time, double *value, mt_error 
         mt_expr_print(e, text, sizeof text);
         return mt_fail(err, MT_EINPUT, "'%s' is not one number: it varies over the cells", text);
     }
-    *value = value_of(NULL, e, time);
+    *value = value_of(e, time);
     return MT_OK;
 }
 

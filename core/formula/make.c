@@ -138,10 +138,11 @@ static mt_status scaled(const mt_expr **out, double coefficient, const mt_expr *
     return after(out, MT_MUL_OP, st, c, base, 0, err);
 }
 
-static mt_status negated(const mt_expr **out, mt_status inner, const mt_expr *x, mt_error *err) {
+/* -(what `inner` has just written to *x) */
+static mt_status negated(const mt_expr **out, mt_status inner, const mt_expr **x, mt_error *err) {
     if (inner) return inner;
-    mt_status st = mt_expr_unary(out, MT_NEG_OP, x, err);
-    mt_expr_unref(&x);
+    mt_status st = mt_expr_unary(out, MT_NEG_OP, *x, err);
+    mt_expr_unref(x);
     return st;
 }
 
@@ -209,7 +210,8 @@ static mt_status make_product(const mt_expr **out, mt_op op, const mt_expr *cons
         if (is(x, 0)) return give(out, x);
         if (is(x, 1)) return give(out, y);
         if (is(x, -1)) return mt_expr_unary(out, MT_NEG_OP, y, err);
-        if (x->op == MT_NEG_OP) return negated(out, mt_expr_binary(&p, MT_MUL_OP, x->arg[0], y, err), p, err);
+        if (x->op == MT_NEG_OP)
+            return negated(out, mt_expr_binary(&p, MT_MUL_OP, x->arg[0], y, err), &p, err);
     }
     for (int i = 0; i < 2; i++) { /* numbers to the front */
         const mt_expr *x = a[i], *y = a[1 - i];
@@ -231,7 +233,7 @@ static mt_status make_quotient(const mt_expr **out, mt_op op, const mt_expr *con
     if (is(a[0], 0) && !is(a[1], 0)) return give(out, a[0]);
     if (a[0] == a[1] && !is(a[0], 0)) return number(out, a[0], 1, err);
     if (a[0]->op == MT_NEG_OP)
-        return negated(out, mt_expr_binary(&p, MT_DIV_OP, a[0]->arg[0], a[1], err), p, err);
+        return negated(out, mt_expr_binary(&p, MT_DIV_OP, a[0]->arg[0], a[1], err), &p, err);
     if (a[1]->op == MT_CONST_OP && a[0]->op == MT_MUL_OP && a[0]->arg[0]->op == MT_CONST_OP) {
         double c = a[0]->arg[0]->value / a[1]->value;
         if (isfinite(c)) return scaled(out, c, a[0]->arg[1], err);
@@ -308,7 +310,7 @@ static mt_status make_spectral(const mt_expr **out, const spectral *s, const mt_
     }
     if (a->op == MT_NEG_OP) {
         if (s->op == MT_GRADSQ_OP) return apply(out, s, a->arg[0], err);
-        return negated(out, apply(&p, s, a->arg[0], err), p, err);
+        return negated(out, apply(&p, s, a->arg[0], err), &p, err);
     }
     for (int i = 0; i < 2 && a->op == MT_MUL_OP; i++)
         if (mt_expr_uniform(a->arg[i])) return scaled_spectral(out, s, a->arg[i], a->arg[1 - i], err);
