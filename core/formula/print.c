@@ -35,7 +35,9 @@ static int tightness(const mt_expr *e) {
     case MT_ADD_OP:
     case MT_SUB_OP: return SUM;
     case MT_MUL_OP:
-    case MT_DIV_OP: return PRODUCT;
+    case MT_DIV_OP:
+    case MT_DLOG_OP:
+    case MT_DDLOG_OP: return PRODUCT;
     case MT_NEG_OP: return UNARY;
     case MT_POW_OP: return POWER;
     case MT_CONST_OP: return e->value < 0 ? UNARY : ATOM;
