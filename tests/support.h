@@ -19,7 +19,8 @@ void check_close_at(double a, double b, double rtol, double atol, const char *wh
 void check_ok_at(mt_status status, const mt_error *err, const char *what, const char *file, int line);
 
 /* Runs body(ctx) with the k-th allocation failing for k = 0, 1, 2, ... until it succeeds without a failure. Every failure
- * must be reported as ENOMEM, and no block may be left behind by any run. body must free all it makes. */
+ * must be reported as ENOMEM, or be harmless (a cache that stays small), and no block may be left behind by any run. body
+ * must free all it makes. */
 void check_allocation_sweep(mt_status (*body)(void *ctx, mt_error *err), void *ctx);
 
 #endif

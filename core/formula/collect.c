@@ -108,6 +108,12 @@ typedef struct collect {
 
 static const mt_expr *collected(collect *w, const mt_expr *e);
 
+static poly *new_polys(mt_builder *b, size_t n) {
+    poly *p = mt_alloc(n, sizeof *p);
+    if (!p && b->status == MT_OK) b->status = mt_fail(b->err, MT_ENOMEM, "no memory for a formula");
+    return p;
+}
+
 static int field_number(collect *w, const mt_expr *e) {
     for (int i = 0; i < w->fields; i++)
         if (w->field[i] == e) return i;
@@ -168,12 +174,12 @@ static bool atom(collect *w, const mt_expr *e, poly *p) {
 static bool product(collect *w, const mt_expr *e, poly *p) {
     for (int i = 0; i < 2; i++) {
         if (!mt_expr_uniform(e->arg[i])) continue;
-        poly *q = mt_alloc(1, sizeof *q);
+        poly *q = new_polys(w->b, 1);
         bool ok = q && to_poly(w, e->arg[1 - i], q) && add_poly(w, p, q, e->arg[i]);
         mt_free(q);
         return ok;
     }
-    poly *q = mt_alloc(2, sizeof *q);
+    poly *q = new_polys(w->b, 2);
     bool ok =
         q && to_poly(w, e->arg[0], &q[0]) && to_poly(w, e->arg[1], &q[1]) && multiply(w, p, &q[0], &q[1]);
     mt_free(q);
@@ -184,7 +190,7 @@ static bool power(collect *w, const mt_expr *e, poly *p) {
     const mt_expr *n = e->arg[1];
     if (n->op != MT_CONST_OP || n->value != floor(n->value) || n->value < 2 || n->value > MOST_DEGREE)
         return atom(w, e, p);
-    poly *q = mt_alloc(2, sizeof *q);
+    poly *q = new_polys(w->b, 2);
     bool ok = q && to_poly(w, e->arg[0], &q[0]);
     if (ok) *p = q[0];
     for (int i = 1; i < n->value && ok; i++) {
@@ -197,7 +203,7 @@ static bool power(collect *w, const mt_expr *e, poly *p) {
 }
 
 static bool sum(collect *w, const mt_expr *e, poly *p) {
-    poly *q = mt_alloc(2, sizeof *q);
+    poly *q = new_polys(w->b, 2);
     const mt_expr *one = mt_build_number(w->b, 1), *sign = mt_build_number(w->b, e->op == MT_SUB_OP ? -1 : 1);
     bool ok = q && to_poly(w, e->arg[0], &q[0]) && to_poly(w, e->arg[1], &q[1]) &&
               add_poly(w, p, &q[0], one) && add_poly(w, p, &q[1], sign);
@@ -206,7 +212,7 @@ static bool sum(collect *w, const mt_expr *e, poly *p) {
 }
 
 static bool scaled(collect *w, const mt_expr *e, const mt_expr *factor, poly *p) {
-    poly *q = mt_alloc(1, sizeof *q);
+    poly *q = new_polys(w->b, 1);
     bool ok = q && to_poly(w, e, q) && add_poly(w, p, q, factor);
     mt_free(q);
     return ok;
@@ -280,7 +286,7 @@ static const mt_expr *inner(collect *w, const mt_expr *e) {
         collect below = {.b = w->b, .done = w->done};
         a[i] = e->arg[i];
         if (!mt_expr_uniform(a[i])) {
-            poly *p = mt_alloc(1, sizeof *p);
+            poly *p = new_polys(w->b, 1);
             if (p && to_poly(&below, a[i], p) && !(p->n == 1 && p->term[0].atom == a[i]))
                 a[i] = from_poly(&below, p);
             mt_free(p);
@@ -305,8 +311,8 @@ mt_status mt_expr_collect(const mt_expr **out, const mt_expr *e, mt_error *err) 
     mt_builder b = {.forms = e->forms, .err = err};
     collect w = {.b = &b};
     *out = NULL;
-    poly *p = mt_alloc(1, sizeof *p);
-    if (!p) return mt_fail(err, MT_ENOMEM, "no memory for a formula");
+    poly *p = new_polys(&b, 1);
+    if (!p) return b.status;
     const mt_expr *r = e;
     if (!mt_expr_uniform(e)) {
         if (to_poly(&w, e, p))
