@@ -106,13 +106,13 @@ static void project(const mt_grid *g, mt_parities parity, real *v, real *line) {
     for (int a = 0; a < g->dim; a++) along(g, a, (parity >> a) & 1, LINE_PROJECT, v, v, line);
 }
 
-static void spectral(oracle *o, const mt_expr *e, const double *a, double *v) {
+static void spectral(oracle *o, mt_op op, int only, const mt_expr *arg, const double *a, double *v) {
     const mt_grid *g = o->grid;
     mt_parities parity = 0;
     size_t most = (size_t)(g->n[0] > g->n[1] ? g->n[0] : g->n[1]);
     if ((size_t)g->n[2] > most) most = (size_t)g->n[2];
-    o->status = mt_expr_parity(e->arg[0], g, &parity, o->err);
-    if (!o->status && e->op == MT_FILTER_OP)
+    o->status = mt_expr_parity(arg, g, &parity, o->err);
+    if (!o->status && op == MT_FILTER_OP)
         o->status = mt_fail(o->err, MT_EUNSUPPORTED, "filters are not evaluated by direct sums");
     real *from = mt_alloc(g->cells, sizeof *from), *to = mt_alloc(g->cells, sizeof *to);
     real *line = mt_alloc(2 * most, sizeof *line);
@@ -121,8 +121,8 @@ static void spectral(oracle *o, const mt_expr *e, const double *a, double *v) {
     for (size_t i = 0; i < g->cells && !o->status; i++) from[i] = a[i];
     if (!o->status) project(g, parity, from, line);
     for (int axis = 0; axis < g->dim && !o->status; axis++) {
-        if (e->op == MT_DERIV_OP && axis != e->axis) continue;
-        along(g, axis, (parity >> axis) & 1, e->op == MT_DERIV_OP ? LINE_FIRST : LINE_SECOND, from, to, line);
+        if (op == MT_DERIV_OP && axis != only) continue;
+        along(g, axis, (parity >> axis) & 1, op == MT_DERIV_OP ? LINE_FIRST : LINE_SECOND, from, to, line);
         for (size_t i = 0; i < g->cells; i++) v[i] += (double)to[i];
     }
     mt_free(from), mt_free(to), mt_free(line);
@@ -150,16 +150,12 @@ static void leaf(oracle *o, const mt_expr *e, double *v) {
 }
 
 static void gradsq(oracle *o, const mt_expr *e, double *v) {
-    for (int axis = 0; axis < o->grid->dim; axis++) {
-        const mt_expr *d = NULL;
-        if (o->status) return;
-        o->status = mt_expr_deriv(&d, axis, e->arg[0], o->err);
-        double *x = d ? mt_alloc(o->grid->cells, sizeof *x) : NULL;
-        const double *a = values_of(o, e->arg[0]);
-        if (x && a && d->op == MT_DERIV_OP) spectral(o, d, a, x);
+    const double *a = values_of(o, e->arg[0]);
+    for (int axis = 0; axis < o->grid->dim && a && !o->status; axis++) {
+        double *x = fresh(o);
+        if (x) spectral(o, MT_DERIV_OP, axis, e->arg[0], a, x);
         for (size_t i = 0; i < o->grid->cells && x; i++) v[i] += x[i] * x[i];
         mt_free(x);
-        mt_expr_unref(&d);
     }
 }
 
@@ -196,7 +192,7 @@ static double *values_of(oracle *o, const mt_expr *e) {
         gradsq(o, e, v);
     else if (mt_op_spectral(e->op)) {
         const double *a = values_of(o, e->arg[0]);
-        if (a) spectral(o, e, a, v);
+        if (a) spectral(o, e->op, e->axis, e->arg[0], a, v);
     } else
         point(o, e, v);
     known = mt_map_at(&o->done, e, true);

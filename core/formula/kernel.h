@@ -62,15 +62,9 @@ MT_API int mt_kernel_registers(const mt_kernel *kernel);    /* tiles of scratch 
 /* The program as text, one instruction a line; as mt_expr_print. */
 MT_API size_t mt_kernel_print(const mt_kernel *kernel, char *buf, size_t size);
 
-/* Name of the vector code in use: "avx512", "avx2" or "plain"; and a switch for tests (NULL: choose again).
- * EINPUT if this machine cannot run it. Not thread-safe. */
-MT_API const char *mt_kernel_machine(void);
-MT_API mt_status mt_kernel_use(const char *machine, mt_error *err) MT_MUST_USE;
-
-/* Vector functions behind the kernels, within 4 ulp of the exact value: y[i] = f(x[i]). Public for tests and
+/* Vector functions behind the kernels, within 2 ulp of the exact value: y[i] = f(x[i]). Public for tests and
  * bench. */
 MT_API void mt_vector_exp(size_t n, const double *x, double *y);
 MT_API void mt_vector_log(size_t n, const double *x, double *y); /* with the extension of expr.h */
-MT_API void mt_vector_pow(size_t n, const double *x, const double *p, double *y);
 
 #endif
