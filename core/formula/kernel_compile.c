@@ -219,6 +219,15 @@ static void emit(compiler *c, item *it) {
     k->code[k->n++] = x;
 }
 
+static mt_operand stored(compiler *c, const mt_expr *e) {
+    mt_kernel *k = c->k;
+    mt_operand a = operand(c, e);
+    if (a.where != MT_IN_INPUT || k->nout < 2) return a;
+    if (!grow(c, &k->code, k->n, &k->room, sizeof *k->code)) return a;
+    k->code[k->n] = (mt_instruction){.code = MT_CODE_COPY, .to = k->registers++, .a = {a}};
+    return (mt_operand){MT_IN_REGISTER, k->code[k->n++].to};
+}
+
 /* Registers within the program, arrays within the spec: a wrong program would write anywhere. */
 static void verify(compiler *c) {
     const mt_kernel *k = c->k;
@@ -241,7 +250,7 @@ static void compile(compiler *c) {
     for (int i = 0; i < s->nout; i++) visit(c, s->out[i]);
     for (int i = 0; i < s->nreduced; i++) visit(c, s->reduced[i]);
     for (int i = 0; i < c->n && !c->status; i++) emit(c, &c->item[i]);
-    for (int i = 0; i < s->nout && !c->status; i++) k->out[i] = operand(c, s->out[i]);
+    for (int i = 0; i < s->nout && !c->status; i++) k->out[i] = stored(c, s->out[i]);
     for (int i = 0; i < s->nreduced && !c->status; i++) {
         k->reduced[i] = operand(c, s->reduced[i]);
         k->reduce[i] = s->reduce[i];

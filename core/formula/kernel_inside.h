@@ -14,6 +14,7 @@ typedef struct mt_operand {
 
 /* Beyond the operators of ops.def: a polynomial in one operand by Horner's rule. */
 #define MT_CODE_POLY MT_OP_COUNT
+#define MT_CODE_COPY (MT_OP_COUNT + 1) /* of an input that is an output as it is: others may overwrite it */
 
 typedef struct mt_instruction {
     int code; /* an mt_op, or MT_CODE_POLY */

@@ -50,7 +50,7 @@ static void say_instruction(out *o, const mt_kernel *k, const mt_instruction *x)
         say(o, ")\n");
         return;
     }
-    say(o, "%s(", mt_op_name((mt_op)x->code));
+    say(o, "%s(", x->code == MT_CODE_COPY ? "COPY" : mt_op_name((mt_op)x->code));
     for (int i = 0; i < 3 && x->a[i].where != MT_IN_NOWHERE; i++) {
         if (i) say(o, ", ");
         say_operand(o, k, x->a[i]);

@@ -156,33 +156,34 @@ MT_VECTOR_CLONES static double sum_of(size_t n, const double *a) {
     return ((s[0] + s[4]) + (s[2] + s[6])) + ((s[1] + s[5]) + (s[3] + s[7]));
 }
 
-/* Comparison only in the loop; the place is looked for when a tile holds a new extreme. NaN: the sum shows
- * it. */
-MT_VECTOR_CLONES static double least_of(size_t n, const double *a, double sign) {
-    double s[LANES], t = INFINITY;
+/* Comparison only in the loop; the place is looked for when a tile holds a new extreme. nans: how many values
+ * were NaN. */
+MT_VECTOR_CLONES static double least_of(size_t n, const double *a, double sign, double *nans) {
+    double s[LANES], bad[LANES] = {0}, t = INFINITY;
     for (int j = 0; j < LANES; j++) s[j] = INFINITY;
     size_t i = 0;
+    *nans = 0;
     for (; i + LANES <= n; i += LANES)
-        for (size_t j = 0; j < LANES; j++) s[j] = sign * a[i + j] >= s[j] ? s[j] : sign * a[i + j];
-    for (; i < n; i++) t = sign * a[i] >= t ? t : sign * a[i];
-    for (int j = 0; j < LANES; j++) t = s[j] >= t ? t : s[j];
+        for (size_t j = 0; j < LANES; j++) {
+            double x = sign * a[i + j];
+            s[j] = x < s[j] ? x : s[j];
+            bad[j] += x != x ? 1.0 : 0.0;
+        }
+    for (; i < n; i++) {
+        t = sign * a[i] < t ? sign * a[i] : t;
+        *nans += a[i] != a[i] ? 1.0 : 0.0;
+    }
+    for (int j = 0; j < LANES; j++) t = s[j] < t ? s[j] : t, *nans += bad[j];
     return t;
 }
 
 static void extreme(mt_reduced *r, bool max, size_t n, const double *a, size_t first) {
-    double sign = max ? -1 : 1, t = least_of(n, a, sign);
-    if (isnan(r->value) || sign * r->value <= t) return; /* !(t < value): a NaN goes on */
+    double sign = max ? -1 : 1, nans, t = least_of(n, a, sign, &nans);
+    if (isnan(r->value) || (nans == 0 && !(t < sign * r->value))) return;
     for (size_t i = 0; i < n; i++)
-        if (isnan(a[i]) || (!isnan(t) && sign * a[i] == t)) {
+        if (nans > 0 ? isnan(a[i]) : sign * a[i] == t) {
             r->value = a[i];
             r->cell = first + i;
-            if (isnan(a[i])) return;
-            for (i++; i < n; i++) /* a NaN behind it counts more */
-                if (isnan(a[i])) {
-                    r->value = a[i];
-                    r->cell = first + i;
-                    return;
-                }
             return;
         }
 }
@@ -249,6 +250,7 @@ static void execute(const tile *t, const mt_instruction *x) {
     case MT_CODE_POLY:
         polynomial(t->n, x->degree, t->k->value + x->coefficients, array_of(t, x->a[0], 0), y);
         return;
+    case MT_CODE_COPY: memcpy(y, array_of(t, x->a[0], 0), t->n * sizeof *y); return;
     case MT_COORD_OP: coordinate(t, x->axis, y); return;
     case MT_WAVE_OP: wave(t, x->axis, y); return;
     case MT_NOISE_OP: mt_random_fill(x->random, x->seed, t->place->first + t->start, t->n, 0, 0, y); return;
