@@ -22,6 +22,10 @@
 
 #define LANES 8
 
+/* A step that changes less than this fraction of the field may err by the accuracy times this fraction: at
+ * rest, or where a ramp sets in, the change is of the order of its own error. */
+#define REST 1e-4
+
 typedef struct scheme {
     double dt, a0, a1, a2; /* a0 u+ + a1 u + a2 u- */
     double b0, b1;         /* weights of E, E- */
@@ -160,7 +164,7 @@ static sums update_mover(const column_ctx *x, const mt_mover *v, lines ln, size_
         mean = update_line(&x->s, &ln, skip);
         if (v->motion == MT_MOTION_CONSERVE) {
             ln.um[0] = u0, ln.r[0] = r0;
-            mean.error = mean.change = 0;
+            mean = (sums){0, 0, 0};
         }
         ln.l += skip, ln.lambda += skip, ln.middle += skip, ln.weight += skip, ln.rn += skip;
         ln.u += skip, ln.um += skip, ln.r += skip, ln.uo += skip, ln.ro += skip;
@@ -168,6 +172,7 @@ static sums update_mover(const column_ctx *x, const mt_mover *v, lines ln, size_
     sums t = update_line(&x->s, &ln, doubles - skip);
     t.error += mean.error;
     t.change += mean.change;
+    t.norm += mean.norm; /* of a field that is not conserved: its mean moves, and errs, too */
     return t;
 }
 
@@ -304,7 +309,7 @@ static double error_ratio(const mt_model *m, double accuracy) {
     for (int i = 0; i < m->n; i++) {
         const double *t = m->totals + 3 * i;
         if (m->mover[i].motion == MT_MOTION_STILL) continue;
-        double allowed = accuracy * sqrt(t[1]) + 1e-11 * sqrt(t[2]) + 1e-300;
+        double allowed = accuracy * (sqrt(t[1]) + REST * sqrt(t[2])) + 1e-300;
         double ratio = sqrt(t[0]) / allowed;
         if (!(ratio <= worst)) worst = isnan(ratio) ? INFINITY : ratio;
     }
