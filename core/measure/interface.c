@@ -1,0 +1,255 @@
+#include "core/measure/interface.h"
+
+#include <math.h>
+
+#include "core/base/memory.h"
+
+/* --- the net of cell centres
+ * ------------------------------------------------------------------------------------------------ */
+
+/* Corner i + d of a cube along one axis: index of its cell. Squares run from centre to centre; before the
+ * first and behind the last centre of a mirror axis the reflected centre stands in, and half of that square
+ * lies outside. */
+static int corner(const mt_grid *g, int axis, int i) {
+    int n = g->n[axis];
+    if (g->wall[axis] == MT_PERIODIC) return (i + n) % n;
+    return i < 0 ? 0 : i >= n ? n - 1 : i;
+}
+
+/* Range of squares along an axis and the share of square i that lies in the box. */
+static int first_square(const mt_grid *g, int axis) {
+    return g->wall[axis] == MT_MIRROR ? -1 : 0;
+}
+static double share(const mt_grid *g, int axis, int i) {
+    return g->wall[axis] == MT_MIRROR && (i == -1 || i == g->n[axis] - 1) ? 0.5 : 1;
+}
+
+static double value(const mt_grid *g, const double *a, int x, int y, int z) {
+    size_t nx = (size_t)g->n[0], ny = (size_t)g->n[1];
+    return a[((size_t)z * ny + (size_t)y) * nx + (size_t)x];
+}
+
+/* --- 1-D and 2-D
+ * ----------------------------------------------------------------------------------------------------------------
+ */
+
+static double crossings(const mt_grid *g, const double *a, double level) {
+    double n = 0;
+    for (int i = 0; i < g->n[0]; i++) {
+        if (i == g->n[0] - 1 && g->wall[0] == MT_MIRROR) break;
+        n += (a[i] > level) != (a[corner(g, 0, i + 1)] > level);
+    }
+    return n;
+}
+
+typedef struct point2 {
+    double x, y;
+} point2;
+
+/* Places on the sides of a unit square with corners v[0] (0,0), v[1] (1,0), v[2] (1,1), v[3] (0,1), in the
+ * order of sides. */
+static int side_points(const double v[4], double level, point2 p[4], int side[4]) {
+    static const double x0[4] = {0, 1, 1, 0}, y0[4] = {0, 0, 1, 1};
+    int n = 0;
+    for (int s = 0; s < 4; s++) {
+        int t = (s + 1) % 4;
+        if ((v[s] > level) == (v[t] > level)) continue;
+        double w = (level - v[s]) / (v[t] - v[s]);
+        p[n] = (point2){x0[s] + w * (x0[t] - x0[s]), y0[s] + w * (y0[t] - y0[s])};
+        side[n++] = s;
+    }
+    return n;
+}
+
+static double piece(const mt_grid *g, point2 a, point2 b) {
+    return hypot((a.x - b.x) * g->h[0], (a.y - b.y) * g->h[1]);
+}
+
+static double square_length(const mt_grid *g, const double v[4], double level) {
+    point2 p[4];
+    int side[4], n = side_points(v, level, p, side);
+    if (n == 2) return piece(g, p[0], p[1]);
+    if (n < 4) return 0;
+    /* a saddle: the corners that agree with the centre are connected through it, so the pieces cut off the
+     * other two */
+    bool centre = (v[0] + v[1] + v[2] + v[3]) / 4 > level;
+    if (centre == (v[0] > level)) return piece(g, p[0], p[1]) + piece(g, p[2], p[3]);
+    return piece(g, p[3], p[0]) + piece(g, p[1], p[2]);
+}
+
+static double length(const mt_grid *g, const double *a, double level) {
+    double total = 0;
+    for (int y = first_square(g, 1); y < g->n[1]; y++) {
+        double row = 0;
+        int y0 = corner(g, 1, y), y1 = corner(g, 1, y + 1);
+        for (int x = first_square(g, 0); x < g->n[0]; x++) {
+            int x0 = corner(g, 0, x), x1 = corner(g, 0, x + 1);
+            double v[4] = {value(g, a, x0, y0, 0), value(g, a, x1, y0, 0), value(g, a, x1, y1, 0),
+                           value(g, a, x0, y1, 0)};
+            row += share(g, 0, x) * share(g, 1, y) * square_length(g, v, level);
+        }
+        total += row;
+    }
+    return total;
+}
+
+/* --- 3-D
+ * -------------------------------------------------------------------------------------------------------------------------
+ */
+
+typedef struct point3 {
+    double r[3];
+} point3;
+
+static double triangle(point3 a, point3 b, point3 c) {
+    double u[3], v[3];
+    for (int i = 0; i < 3; i++) u[i] = b.r[i] - a.r[i], v[i] = c.r[i] - a.r[i];
+    double n[3] = {u[1] * v[2] - u[2] * v[1], u[2] * v[0] - u[0] * v[2], u[0] * v[1] - u[1] * v[0]};
+    return 0.5 * sqrt(n[0] * n[0] + n[1] * n[1] + n[2] * n[2]);
+}
+
+static point3 between(const point3 *p, const double *v, int i, int j, double level) {
+    double w = (level - v[i]) / (v[j] - v[i]);
+    point3 q;
+    for (int k = 0; k < 3; k++) q.r[k] = p[i].r[k] + w * (p[j].r[k] - p[i].r[k]);
+    return q;
+}
+
+static double tetrahedron_area(const point3 p[4], const double v[4], double level) {
+    int in[4], out[4], n = 0, m = 0;
+    for (int i = 0; i < 4; i++) {
+        if (v[i] > level)
+            in[n++] = i;
+        else
+            out[m++] = i;
+    }
+    if (n == 0 || m == 0) return 0;
+    if (n == 2) {
+        point3 a = between(p, v, in[0], out[0], level), b = between(p, v, in[0], out[1], level);
+        point3 c = between(p, v, in[1], out[1], level), d = between(p, v, in[1], out[0], level);
+        return triangle(a, b, c) + triangle(a, c, d);
+    }
+    const int *one = n == 1 ? in : out, *three = n == 1 ? out : in;
+    return triangle(between(p, v, one[0], three[0], level), between(p, v, one[0], three[1], level),
+                    between(p, v, one[0], three[2], level));
+}
+
+/* Six tetrahedra around the diagonal from corner 0 to corner 7 (corner bits: x 1, y 2, z 4). */
+static double cube_area(const mt_grid *g, const double v[8], double level) {
+    static const int paths[6][4] = {{0, 1, 3, 7}, {0, 1, 5, 7}, {0, 2, 3, 7},
+                                    {0, 2, 6, 7}, {0, 4, 5, 7}, {0, 4, 6, 7}};
+    double area = 0;
+    int above = 0;
+    for (int i = 0; i < 8; i++) above += v[i] > level;
+    for (int t = 0; t < 6 && above > 0 && above < 8; t++) {
+        point3 p[4];
+        double w[4];
+        for (int i = 0; i < 4; i++) {
+            int c = paths[t][i];
+            w[i] = v[c];
+            for (int k = 0; k < 3; k++) p[i].r[k] = (c >> k & 1) * g->h[k];
+        }
+        area += tetrahedron_area(p, w, level);
+    }
+    return area;
+}
+
+static double area(const mt_grid *g, const double *a, double level) {
+    double total = 0;
+    for (int z = first_square(g, 2); z < g->n[2]; z++)
+        for (int y = first_square(g, 1); y < g->n[1]; y++) {
+            double row = 0;
+            for (int x = first_square(g, 0); x < g->n[0]; x++) {
+                double v[8];
+                for (int c = 0; c < 8; c++)
+                    v[c] = value(g, a, corner(g, 0, x + (c & 1)), corner(g, 1, y + (c >> 1 & 1)),
+                                 corner(g, 2, z + (c >> 2 & 1)));
+                row += share(g, 0, x) * cube_area(g, v, level);
+            }
+            total += share(g, 1, y) * share(g, 2, z) * row;
+        }
+    return total;
+}
+
+double mt_interface_measure(const mt_grid *g, const double *a, double level) {
+    return g->dim == 1 ? crossings(g, a, level) : g->dim == 2 ? length(g, a, level) : area(g, a, level);
+}
+
+/* --- width
+ * -----------------------------------------------------------------------------------------------------------------------
+ */
+
+typedef struct series {
+    int modes;
+    double step; /* wavenumber of mode 1, per cell */
+    double *a, *b;
+} series;
+
+static const double pi = 3.14159265358979323846;
+
+/* Coefficients by direct sums; the centre of cell j lies at j + 1/2. */
+static void analyse(series *s, int n, mt_wall wall, const double *v) {
+    s->modes = wall == MT_PERIODIC ? (n + 1) / 2 : n;
+    s->step = (wall == MT_PERIODIC ? 2 : 1) * pi / n;
+    for (int m = 0; m < s->modes; m++) {
+        double scale = (m ? 2.0 : 1.0) / n;
+        s->a[m] = s->b[m] = 0;
+        for (int j = 0; j < n; j++) {
+            s->a[m] += scale * v[j] * cos(s->step * m * (j + 0.5));
+            if (wall == MT_PERIODIC) s->b[m] += scale * v[j] * sin(s->step * m * (j + 0.5));
+        }
+    }
+}
+
+static double at(const series *s, double x) {
+    double v = 0;
+    for (int m = 0; m < s->modes; m++) v += s->a[m] * cos(s->step * m * x) + s->b[m] * sin(s->step * m * x);
+    return v;
+}
+
+/* Bisection between x (on one side of the level) and a step further on, walking in direction d until it is
+ * passed. */
+static bool passes(const series *s, double x, double d, double level, int n, double *where) {
+    bool side = at(s, x) > level;
+    for (int i = 0; i < 4 * n; i++, x += d) {
+        if ((at(s, x + d) > level) == side) continue;
+        double low = x, high = x + d;
+        for (int k = 0; k < 60; k++) {
+            double mid = 0.5 * (low + high);
+            if ((at(s, mid) > level) == side)
+                low = mid;
+            else
+                high = mid;
+        }
+        *where = 0.5 * (low + high);
+        return true;
+    }
+    return false;
+}
+
+static bool width_of(const series *s, int n, double low, double high, double *width) {
+    double middle, p, q, half = 0.5 * (low + high);
+    if (!passes(s, 0.5, 0.25, half, n, &middle)) return false;
+    bool rising = at(s, middle + 0.05) > half;
+    double ten = low + 0.1 * (high - low), ninety = low + 0.9 * (high - low);
+    if (!passes(s, middle, -0.25, rising ? ten : ninety, n, &p)) return false;
+    if (!passes(s, middle, 0.25, rising ? ninety : ten, n, &q)) return false;
+    *width = q - p;
+    return true;
+}
+
+mt_status mt_interface_width(int n, double h, mt_wall wall, const double *a, double low, double high,
+                             double *width, mt_error *err) {
+    series s = {0};
+    mt_status st = mt_new(&s.a, (size_t)n, sizeof(double), "a line", err);
+    if (!st) st = mt_new(&s.b, (size_t)n, sizeof(double), "a line", err);
+    if (!st) {
+        analyse(&s, n, wall, a);
+        if (!width_of(&s, n, low, high, width))
+            st = mt_fail(err, MT_EINPUT, "the line does not pass from %.4g to %.4g: there is no interface",
+                         low, high);
+        *width *= h;
+    }
+    mt_free(s.a), mt_free(s.b);
+    return st;
+}
