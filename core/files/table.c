@@ -53,7 +53,7 @@ static void add_number(line *l, double x) {
     if (!isnan(x)) add(l, text, (size_t)mt_number_exact(x, text));
 }
 
-static void add_header(line *l, int columns, const mt_column column[]) {
+static void add_header(line *l, int columns, const mt_table_column column[]) {
     for (int i = 0; i < columns; i++) {
         line title = {0};
         const char *unit = column[i].unit ? column[i].unit : "";
@@ -85,7 +85,7 @@ struct mt_table {
 };
 
 static mt_status begin(mt_table **out, const mt_folder *folder, const char *name, int columns,
-                       const mt_column column[], mt_error *err) {
+                       const mt_table_column column[], mt_error *err) {
     *out = NULL;
     mt_table *t;
     mt_status status = mt_new(&t, 1, sizeof *t, "a table", err);
@@ -151,7 +151,7 @@ static void remove_new(const mt_folder *folder, const char *name) {
 }
 
 mt_status mt_table_create(mt_table **out, const mt_folder *folder, const char *name, int columns,
-                          const mt_column column[], mt_error *err) {
+                          const mt_table_column column[], mt_error *err) {
     MT_REQUIRE(out && name && columns >= 1 && column, err);
     mt_status status = begin(out, folder, name, columns, column, err);
     if (!status) status = open_table(*out, folder, name, O_RDWR | O_CREAT | O_EXCL, err);
@@ -194,7 +194,7 @@ static mt_status check_table(mt_table *t, uint64_t size, mt_error *err) {
 }
 
 mt_status mt_table_resume(mt_table **out, const mt_folder *folder, const char *name, int columns,
-                          const mt_column column[], uint64_t size, mt_error *err) {
+                          const mt_table_column column[], uint64_t size, mt_error *err) {
     MT_REQUIRE(out && name && columns >= 1 && column, err);
     mt_status status = begin(out, folder, name, columns, column, err);
     if (!status) status = open_table(*out, folder, name, O_RDWR, err);

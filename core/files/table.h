@@ -8,11 +8,11 @@
 
 #include "core/files/folder.h"
 
-typedef struct mt_column {
+typedef struct mt_table_column {
     const char *name; /* "time" */
     const char *unit; /* "h"; NULL or "": the name stands alone */
     bool text;        /* cells are text, not numbers */
-} mt_column;
+} mt_table_column;
 
 typedef struct mt_cell {
     double value;     /* of a number column; NaN is written as an empty cell */
@@ -23,12 +23,12 @@ typedef struct mt_table mt_table;
 
 /* A new table with its header row; a file of that name is refused with EEXISTS. */
 MT_API mt_status mt_table_create(mt_table **out, const mt_folder *folder, const char *name, int columns,
-                                 const mt_column column[], mt_error *err) MT_MUST_USE;
+                                 const mt_table_column column[], mt_error *err) MT_MUST_USE;
 
 /* Goes on with a table: cuts it back to `size` bytes (mt_table_size at the checkpoint). EFORMAT when it is
  * shorter, its header row is not the one asked for, or byte size-1 is not the end of a line. */
 MT_API mt_status mt_table_resume(mt_table **out, const mt_folder *folder, const char *name, int columns,
-                                 const mt_column column[], uint64_t size, mt_error *err) MT_MUST_USE;
+                                 const mt_table_column column[], uint64_t size, mt_error *err) MT_MUST_USE;
 
 /* Appends a row (one cell for each column) with one write. When that fails part way the file is cut back to
  * whole lines. */

@@ -6,8 +6,8 @@
 
 #include "core/files/table.h"
 
-static const mt_column two[] = {{"time", "h", false}, {"lambda", "nm", false}};
-static const mt_column three[] = {{"time", "h", false}, {"stage, name", NULL, true}, {"x", "", false}};
+static const mt_table_column two[] = {{"time", "h", false}, {"lambda", "nm", false}};
+static const mt_table_column three[] = {{"time", "h", false}, {"stage, name", NULL, true}, {"x", "", false}};
 
 static void test_exact_file(void **state) {
     (void)state;

@@ -1,0 +1,143 @@
+/* Measurements of a field's present values. */
+#include "lua/glue.h"
+
+#include "core/base/memory.h"
+#include "core/measure/domains.h"
+#include "core/measure/growth.h"
+#include "core/measure/interface.h"
+#include "core/measure/statistics.h"
+#include "core/measure/structure.h"
+
+static void set(lua_State *L, const char *name, double value) {
+    lua_pushnumber(L, value);
+    lua_setfield(L, -2, name);
+}
+
+static void set_list(lua_State *L, const char *name, size_t n, const double *v) {
+    lua_createtable(L, (int)n, 0);
+    for (size_t i = 0; i < n; i++) {
+        lua_pushnumber(L, v[i]);
+        lua_rawseti(L, -2, (lua_Integer)i + 1);
+    }
+    lua_setfield(L, -2, name);
+}
+
+static int statistics(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    mt_statistics s;
+    mt_statistics_of(f->grid, f->values, &s);
+    lua_newtable(L);
+    set(L, "mean", s.mean);
+    set(L, "integral", s.integral);
+    set(L, "variance", s.variance);
+    set(L, "minimum", s.minimum);
+    set(L, "maximum", s.maximum);
+    return 1;
+}
+
+static int peaks(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_peaks p;
+    glue_check(L, mt_peaks_of(f->grid, f->values, &p, &err), &err);
+    lua_newtable(L);
+    set(L, "low", p.low);
+    set(L, "high", p.high);
+    set(L, "amplitude", p.amplitude);
+    set(L, "level", p.level);
+    lua_pushboolean(L, p.two);
+    lua_setfield(L, -2, "two");
+    return 1;
+}
+
+static int phase_fraction(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    lua_pushnumber(L, mt_phase_fraction(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3)));
+    return 1;
+}
+
+/* domains(field, level, above, full) */
+static int domains(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_domains d;
+    mt_status st = mt_domains_find(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3),
+                                   lua_toboolean(L, 4), NULL, &d, &err);
+    glue_check(L, st, &err);
+    lua_newtable(L);
+    set(L, "count", (double)d.count);
+    set(L, "largest", d.largest);
+    set(L, "mean", d.mean);
+    set(L, "total", d.total);
+    set_list(L, "sizes", d.count, d.size);
+    mt_domains_free(&d);
+    return 1;
+}
+
+static int interface(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    lua_pushnumber(L, mt_interface_measure(f->grid, f->values, luaL_checknumber(L, 2)));
+    return 1;
+}
+
+static int structure(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    glue_grid *g = glue_grid_at(L, 2);
+    mt_structure s;
+    if (!g->sweeper) glue_check(L, mt_sweeper_new(&g->sweeper, g->grid, glue_of(L)->pool, &err), &err);
+    glue_check(L, mt_structure_of(g->sweeper, f->values, &s, &err), &err);
+    lua_newtable(L);
+    set(L, "wavelength", s.wavelength);
+    set(L, "peak", s.peak);
+    set(L, "first", s.first);
+    set(L, "variance", s.variance);
+    set_list(L, "k", (size_t)s.shells, s.k);
+    set_list(L, "s", (size_t)s.shells, s.s);
+    set_list(L, "modes", (size_t)s.shells, s.modes);
+    mt_structure_free(&s);
+    return 1;
+}
+
+/* fit_power(x, y, from, to) and fit_cubic(t, l) -> {slope, intercept, slope_error, points}, or nil where
+ * there are too few */
+static int push_fit(lua_State *L, mt_status st, const mt_line_fit *fit) {
+    if (st != MT_OK) {
+        lua_pushnil(L);
+        return 1;
+    }
+    lua_newtable(L);
+    set(L, "slope", fit->slope);
+    set(L, "intercept", fit->intercept);
+    set(L, "slope_error", fit->slope_error);
+    set(L, "points", fit->points);
+    return 1;
+}
+
+static int fit_power(lua_State *L) {
+    mt_error err = {0};
+    mt_line_fit fit;
+    size_t n, m;
+    double *x = glue_numbers(L, 1, &n), *y = glue_numbers(L, 2, &m);
+    if (n != m) return glue_fail(L, MT_ESCRIPT, "a fit needs as many x as y");
+    return push_fit(L, mt_fit_power((int)n, x, y, luaL_checknumber(L, 3), luaL_checknumber(L, 4), &fit, &err),
+                    &fit);
+}
+
+static int fit_cubic(lua_State *L) {
+    mt_error err = {0};
+    mt_line_fit fit;
+    size_t n, m;
+    double *x = glue_numbers(L, 1, &n), *y = glue_numbers(L, 2, &m);
+    if (n != m) return glue_fail(L, MT_ESCRIPT, "a fit needs as many times as lengths");
+    return push_fit(L, mt_fit_cubic((int)n, x, y, &fit, &err), &fit);
+}
+
+void glue_open_measure(lua_State *L) {
+    static const luaL_Reg functions[] = {
+        {"statistics", statistics}, {"peaks", peaks},         {"phase_fraction", phase_fraction},
+        {"domains", domains},       {"interface", interface}, {"structure", structure},
+        {"fit_power", fit_power},   {"fit_cubic", fit_cubic}, {NULL, NULL},
+    };
+    luaL_setfuncs(L, functions, 0);
+}
