@@ -74,6 +74,6 @@ double mt_grid_wavenumber(const mt_grid *grid, int axis, int mode) {
     const double pi = 3.14159265358979323846;
     double length = grid->n[axis] * grid->h[axis];
     if (grid->wall[axis] == MT_MIRROR) return pi * mode / length;
-    int signed_mode = 2 * mode > grid->n[axis] ? mode - grid->n[axis] : mode;
+    int signed_mode = mode > grid->n[axis] / 2 ? mode - grid->n[axis] : mode;
     return 2 * pi * signed_mode / length;
 }

@@ -52,7 +52,8 @@ mt_status mt_line_plan(mt_line *line, mt_line_kind kind, int n, bool complex, mt
         plan_mirror(line, buf);
     mt_plan_unlock();
     mt_free(buf);
-    if (!line->forward[0] || !line->inverse[0])
+    bool sines = kind != MT_LINE_MIRROR || (line->forward[1] && line->inverse[1]);
+    if (!line->forward[0] || !line->inverse[0] || !sines)
         return mt_fail(err, MT_ESYSTEM, "FFTW has no plan for a line of %d cells", n);
     return MT_OK;
 }

@@ -114,20 +114,20 @@ static mt_status lay_out(mt_sweeper *w, mt_error *err) {
     return st;
 }
 
-static bool power_of_two(size_t n) {
-    return (n & (n - 1)) == 0;
+/* An odd number of cache lines: then the rows that a block of columns touches spread over all sets of the
+ * caches. */
+static size_t pad_row(size_t doubles) {
+    return (mt_round_up(doubles, 8) / 8 | 1) * 8;
 }
 
 static void size_work(mt_sweeper *w) {
     const mt_spectrum *s = &w->s;
     size_t slab = s->columns * (w->inner_complex ? 2 : 1);
-    w->ld = w->inner_cells == 1 ? 1 : mt_round_up(slab, 8);
-    if (w->ld >= 512 && power_of_two(w->ld)) w->ld += 8;
+    w->ld = w->inner_cells == 1 ? 1 : pad_row(slab);
     w->work_doubles = w->ld * (size_t)w->grid->n[s->outer];
     if (s->outer == 2 && w->axis[1].kind != MT_LINE_NONE) {
         size_t row = (size_t)s->modes[0] * (w->axis[0].kind == MT_LINE_HALF ? 2 : 1);
-        w->plane_ld = mt_round_up(row, 8);
-        if (w->plane_ld >= 512 && power_of_two(w->plane_ld)) w->plane_ld += 8;
+        w->plane_ld = pad_row(row);
     }
     size_t rows = MT_UNIT_CELLS / w->inner_cells;
     w->rows_per_unit = rows < 1 ? 1 : rows > (size_t)w->grid->n[s->outer] ? w->grid->n[s->outer] : (int)rows;
@@ -359,27 +359,51 @@ static size_t unit_room(const mt_sweeper *w) {
     return mt_round_up(mt_sweeper_unit_cells(w), 8);
 }
 
+/* Along a mirror axis of one cell the only sine is mode n, which is projected out. */
+static bool vanishes(const mt_sweeper *w, mt_parities p) {
+    for (int a = 0; a < 3; a++)
+        if (w->axis[a].kind == MT_LINE_NONE && is_odd(p, a)) return true;
+    return false;
+}
+
+/* With one axis only (outer == 0) mixed data are the values themselves. */
+static void read_unit(const sweep *x, int i, size_t r0, size_t r1, double *cells, double *scratch) {
+    const mt_sweeper *w = x->w;
+    mt_parities p = x->in_parity[i];
+    if (vanishes(w, p))
+        memset(cells, 0, (r1 - r0) * w->inner_cells * sizeof *cells);
+    else if (w->s.outer == 0)
+        memcpy(cells, x->in[i] + r0, (r1 - r0) * sizeof *cells);
+    else
+        for (size_t r = r0; r < r1; r++)
+            slab_inverse(w, p, x->in[i] + r * w->ld, cells + (r - r0) * w->inner_cells, scratch);
+}
+
+static void write_unit(const sweep *x, int i, size_t r0, size_t r1, double *cells, double *scratch) {
+    const mt_sweeper *w = x->w;
+    mt_parities p = x->out_parity[i];
+    if (vanishes(w, p))
+        memset(x->out[i] + r0 * w->ld, 0, (r1 - r0) * w->ld * sizeof *cells);
+    else if (w->s.outer == 0)
+        memcpy(x->out[i] + r0, cells, (r1 - r0) * sizeof *cells);
+    else
+        for (size_t r = r0; r < r1; r++)
+            slab_forward(w, p, cells + (r - r0) * w->inner_cells, x->out[i] + r * w->ld, scratch);
+}
+
 static mt_status row_job(void *ctx, size_t index, int worker, mt_error *err) {
     const sweep *x = ctx;
     const mt_sweeper *w = x->w;
     double *in[MOST_ARRAYS], *out[MOST_ARRAYS], *at = w->buffer[worker].at;
-    size_t r0 = index * (size_t)w->rows_per_unit, r1 = r0 + (size_t)w->rows_per_unit, n = w->inner_cells;
+    size_t r0 = index * (size_t)w->rows_per_unit, r1 = r0 + (size_t)w->rows_per_unit;
     size_t outer = (size_t)w->grid->n[w->s.outer];
-    bool line = w->s.outer == 0; /* one axis only: mixed data are the values themselves */
     if (r1 > outer) r1 = outer;
     for (int i = 0; i < x->nin; i++, at += unit_room(w)) in[i] = at;
     for (int i = 0; i < x->nout; i++, at += unit_room(w)) out[i] = at;
-    for (int i = 0; i < x->nin && line; i++) memcpy(in[i], x->in[i] + r0, (r1 - r0) * sizeof(double));
-    for (int i = 0; i < x->nin && !line; i++)
-        for (size_t r = r0; r < r1; r++)
-            slab_inverse(w, x->in_parity[i], x->in[i] + r * w->ld, in[i] + (r - r0) * n, at);
-    mt_unit unit = {index, r0 * n, (r1 - r0) * n};
+    for (int i = 0; i < x->nin; i++) read_unit(x, i, r0, r1, in[i], at);
+    mt_unit unit = {index, r0 * w->inner_cells, (r1 - r0) * w->inner_cells};
     mt_status st = x->row(x->ctx, &unit, in, out, worker, err);
-    for (int i = 0; i < x->nout && line && !st; i++)
-        memcpy(x->out[i] + r0, out[i], (r1 - r0) * sizeof(double));
-    for (int i = 0; i < x->nout && !line && !st; i++)
-        for (size_t r = r0; r < r1; r++)
-            slab_forward(w, x->out_parity[i], out[i] + (r - r0) * n, x->out[i] + r * w->ld, at);
+    for (int i = 0; i < x->nout && !st; i++) write_unit(x, i, r0, r1, out[i], at);
     return st;
 }
 
@@ -404,11 +428,15 @@ mt_status mt_sweep_rows(mt_sweeper *w, int nin, double *const in[], const mt_par
  * ---------------------------------------------------------------------------------------------------------
  */
 
-static bool inner_nyquist(const mt_sweeper *w, const int mode[3]) {
-    for (int a = 0; a < 3; a++)
-        if (a != w->s.outer && (w->axis[a].kind == MT_LINE_HALF || w->axis[a].kind == MT_LINE_FULL) &&
-            2 * mode[a] == w->grid->n[a])
-            return true;
+/* Projected out along an inner axis: a Nyquist mode, or mode 0 of an odd array. */
+static bool inner_dropped(const mt_sweeper *w, mt_parities p, const int mode[3]) {
+    for (int a = 0; a < 3; a++) {
+        mt_line_kind kind = w->axis[a].kind;
+        bool periodic = kind == MT_LINE_HALF || kind == MT_LINE_FULL;
+        if (a == w->s.outer) continue;
+        if (periodic && w->grid->n[a] % 2 == 0 && mode[a] == w->grid->n[a] / 2) return true;
+        if (is_odd(p, a) && mode[a] == 0) return true;
+    }
     return false;
 }
 
@@ -452,13 +480,14 @@ static mt_status column_job(void *ctx, size_t index, int worker, mt_error *err) 
     for (int i = 0; i < x->nin; i++) load_block(x, i, first, &b, at + (size_t)i * MT_BLOCK * room);
     for (size_t l = 0; l < count; l++) {
         mt_column c = describe(w, first + l);
-        bool dropped = inner_nyquist(w, c.mode);
         for (int i = 0; i < x->nin; i++) in[i] = at + ((size_t)i * MT_BLOCK + l) * room;
         for (int i = 0; i < x->nout; i++) out[i] = outs + ((size_t)i * MT_BLOCK + l) * room;
-        for (int i = 0; i < x->nin && dropped; i++) memset(in[i], 0, bytes);
+        for (int i = 0; i < x->nin; i++)
+            if (inner_dropped(w, x->in_parity[i], c.mode)) memset(in[i], 0, bytes);
         mt_status st = x->column(x->ctx, &c, in, out, worker, err);
         if (st) return st;
-        for (int i = 0; i < x->nout && dropped; i++) memset(out[i], 0, bytes);
+        for (int i = 0; i < x->nout; i++)
+            if (inner_dropped(w, x->out_parity[i], c.mode)) memset(out[i], 0, bytes);
     }
     for (int i = 0; i < x->nout; i++) store_block(x, i, first, &b, outs + (size_t)i * MT_BLOCK * room);
     return MT_OK;
