@@ -1,11 +1,21 @@
 /* The structure factor and the lengths read from it.
  *
- * S(k) = h^d |FT(c - mean)|^2 / N for each mode, a volume: (1/V) times the sum over all modes is the variance
- * of c. On mirror axes the modes are cosines of k = pi m / L; each counts once with S = V w |a|^2, w = 1/2
- * for m > 0, which keeps that sum rule and the density of modes in k. Averages over shells of width 2 pi / L,
- * L the longest side of the box; shell i holds (i - 1/2) to (i + 1/2) widths and its k is the mean k of its
- * modes. Shells beyond the shortest Nyquist wavenumber are left out (corners of the spectrum are sampled
- * unevenly). */
+ * S(k) = h^d |FT(c - mean)|^2 / N for each mode, FT the plain sum over the N cells: a volume (area, length)
+ * times c^2, such that (1/V) times the sum over all modes is the variance of c (Parseval). On mirror axes the
+ * modes are cosines of k = pi m / L; each counts once with S = V w |a|^2, a its coefficient, w = 1/2
+ * per mirror axis with m > 0. That keeps the sum rule, and a shell holds as many modes as in a periodic box
+ * of the same side, so S means the same. Modes that the core projects out (Nyquist modes of even periodic
+ * axes) are neither summed nor counted.
+ *
+ * Averages are over shells of width 2 pi / L, L the longest side of the box among axes of more than one cell;
+ * shell i (from 1) holds k from (i - 1/2) to (i + 1/2) widths, the lower bound included, and its k is the
+ * mean k of its modes. Shells that reach beyond the smallest Nyquist wavenumber pi / h of the axes are left
+ * out (corners of the spectrum are sampled unevenly), and so is the mean k = 0. The axes of an unequal box
+ * weigh in with the modes they have.
+ *
+ * Sources: the definition of S and of the first moment k1 = sum k S / sum S is common practice in work on
+ * spinodal decomposition (Lebowitz, Marro & Kalos, Acta Metall. 30 (1982) 297; from memory). The moment is of
+ * the *shell-averaged* S; the mode-weighted one hangs on the Porod tail k^-(d+1) and so on the grid. */
 #ifndef MT_MEASURE_STRUCTURE_H
 #define MT_MEASURE_STRUCTURE_H
 
@@ -13,15 +23,19 @@
 
 typedef struct mt_structure {
     int shells;
-    double *k, *s;     /* [shells]: mean wavenumber (rad/m), mean S (m^d); k = 0 is left out */
-    double *modes;     /* [shells]: modes in the shell; shells without any have S = 0 */
-    double first;      /* k1 = sum k S / sum S over shells, both shell-averaged: first moment */
+    double *k, *s; /* [shells]: mean wavenumber (rad/m), mean S (m^d); k = 0 is left out */
+    double *modes; /* [shells]: modes in the shell */
+    double width;  /* of a shell, rad/m */
+    double
+        first; /* k1 = sum k S / sum S over shells, both shell-averaged: first moment; NaN without variance */
     double wavelength; /* 2 pi / k1, a characteristic length; NaN for a field without variance */
-    double peak; /* wavelength of the peak: parabola in log S through the highest shell and its neighbours */
-    double variance; /* from the sum over all modes */
+    double peak; /* wavelength of the peak: parabola in log S through the highest shell and its neighbours;
+                    NaN likewise */
+    double variance; /* (1/V) times the sum over all modes, also those beyond the last shell */
 } mt_structure;
 
-/* a: the field on the sweeper's grid. Takes two spectral arrays of memory while it works. */
+/* a: the field on the sweeper's grid. ENOMEM (one spectral and one work array, about 16 bytes per cell, while
+ * it works; 24 bytes per shell stay until freed). */
 MT_API mt_status mt_structure_of(mt_sweeper *sweeper, const double *a, mt_structure *out,
                                  mt_error *err) MT_MUST_USE;
 MT_API void mt_structure_free(mt_structure *s);
