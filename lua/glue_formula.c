@@ -215,6 +215,17 @@ static int contains(lua_State *L) {
     return 1;
 }
 
+/* dim(e) -> axes of the grid its fields live on, or nil */
+static int dim(lua_State *L) {
+    mt_error err = {0};
+    mt_grid *grid = NULL;
+    const mt_expr *e = glue_expr(L, 1, "a formula");
+    glue_check(L, mt_expr_grid(e, &grid, &err), &err);
+    if (grid) lua_pushinteger(L, grid->dim);
+    else lua_pushnil(L);
+    return 1;
+}
+
 /* partial(e, wrt), variation(density, field, dim), replace(e, what, by) */
 static int partial(lua_State *L) {
     mt_error err = {0};
@@ -312,7 +323,7 @@ void glue_open_formula(lua_State *L) {
         {"number", number},
         {"is_expr", is_expr},
         {"kind", kind},
-        {"contains", contains},
+        {"contains", contains}, {"dim", dim},
         {"partial", partial},
         {"replace", replace},
         {"param", new_param},

@@ -60,6 +60,24 @@ static int field_set(lua_State *L) {
     return 0;
 }
 
+/* add_discs(field, centres, radius, width, amount): centres one after the other */
+static int add_discs(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    size_t n;
+    double *centres = glue_numbers(L, 2, &n);
+    mt_field_add_discs(f, (int)(n / (size_t)f->grid->dim), centres, luaL_checknumber(L, 3), luaL_checknumber(L, 4),
+                       luaL_checknumber(L, 5));
+    return 0;
+}
+
+/* random(seed, stream) -> a number in [0, 1) that depends on nothing else */
+static int random_one(lua_State *L) {
+    double v;
+    mt_random_fill(MT_RANDOM_UNIFORM, (uint64_t)luaL_checkinteger(L, 1), (uint64_t)luaL_checkinteger(L, 2), 1, 0, 1, &v);
+    lua_pushnumber(L, 0.5 * (v + 1));
+    return 1;
+}
+
 /* evaluate(into, grid, expression, fields, time): values of the expression in the field `into` (not touched)
  */
 static int evaluate(lua_State *L) {
@@ -278,7 +296,7 @@ void glue_open_motion(lua_State *L) {
         {"conserve", conserve}, {"relax", relax},           {"evolve", evolve},
         {"still", still},       {"potential", potential},   {"describe", describe},
         {"bytes", bytes},       {"growth", growth},         {"start", start},
-        {"state", state},       {"advance", advance},       {NULL, NULL},
+        {"state", state},       {"advance", advance}, {"add_discs", add_discs}, {"random", random_one}, {NULL, NULL},
     };
     static const luaL_Reg field_meta[] = {{"__gc", free_field}, {"__close", free_field}, {NULL, NULL}};
     static const luaL_Reg model_meta[] = {{"__gc", free_model}, {"__close", free_model}, {NULL, NULL}};

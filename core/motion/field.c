@@ -1,5 +1,6 @@
 #include "core/motion/field.h"
 
+#include <math.h>
 #include <string.h>
 
 #include "core/base/memory.h"
@@ -152,4 +153,32 @@ mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, i
     if (st) return mt_context(err, st, "field '%s'", field->symbol->name);
     mt_field_touch(field);
     return MT_OK;
+}
+
+/* --- discs --------------------------------------------------------------------------------------------------------------- */
+
+/* Squared distance along one axis from cell i to a coordinate. */
+static double apart(const mt_grid *g, int axis, int i, double x) {
+    double length = g->n[axis] * g->h[axis], d = fabs((i + 0.5) * g->h[axis] - x);
+    if (g->wall[axis] == MT_PERIODIC) d = fmin(d, length - d);
+    return d * d;
+}
+
+static void add_disc(mt_field *f, const double *centre, double radius, double width, double amount) {
+    const mt_grid *g = f->grid;
+    double reach = radius + 20 * width;
+    size_t cell = 0;
+    for (int z = 0; z < g->n[2]; z++)
+        for (int y = 0; y < g->n[1]; y++) {
+            double rest = (g->dim > 1 ? apart(g, 1, y, centre[1]) : 0) + (g->dim > 2 ? apart(g, 2, z, centre[2]) : 0);
+            for (int x = 0; x < g->n[0]; x++, cell++) {
+                double r = sqrt(rest + apart(g, 0, x, centre[0]));
+                if (r < reach) f->values[cell] += 0.5 * amount * (1 - tanh((r - radius) / width));
+            }
+        }
+}
+
+void mt_field_add_discs(mt_field *field, int count, const double *centres, double radius, double width, double amount) {
+    for (int i = 0; i < count; i++) add_disc(field, centres + i * field->grid->dim, radius, width, amount);
+    mt_field_touch(field);
 }

@@ -1,0 +1,120 @@
+-- The closed environment scripts run in: no processes, no files but through the tool, no bytecode, nothing that differs from
+-- one process to the next (order of pairs, seed of math.random).
+local core = require "core"
+local text = require "text"
+local formula = require "formula"
+local grids = require "grid"
+local measure = require "measure"
+local schedule = require "schedule"
+local units = require "unit"
+local inputs = require "input"
+
+local M = {}
+
+local bundled = { thermo = true }
+
+local function sorted_next(t, k)
+  if type(t) ~= "table" then core.fail("next: expected a table, found " .. type(t)) end
+  local keys = text.keys(t)
+  if k == nil then
+    if keys[1] == nil then return nil end
+    return keys[1], t[keys[1]]
+  end
+  for i, key in ipairs(keys) do
+    if rawequal(key, k) then
+      if keys[i + 1] == nil then return nil end
+      return keys[i + 1], t[keys[i + 1]]
+    end
+  end
+end
+
+local function sorted_pairs(t)
+  local meta = getmetatable(t)
+  if type(meta) == "table" and meta.__pairs then return meta.__pairs(t) end
+  if type(t) ~= "table" then core.fail("pairs: expected a table, found " .. type(t)) end
+  local keys, i = text.keys(t), 0
+  return function()
+    local k
+    repeat
+      i = i + 1
+      k = keys[i]
+    until k == nil or t[k] ~= nil
+    return k, t[k]
+  end, t, nil
+end
+
+-- A stop asked for from outside passes through every protected call.
+local function passing_stop(f)
+  return function(...)
+    local r = table.pack(f(...))
+    if core.stopped() then core.raise_stopped() end
+    return table.unpack(r, 1, r.n)
+  end
+end
+
+local function copy(t, without)
+  local c = {}
+  for k, v in next, t do
+    if not (without and without[k]) then c[k] = v end
+  end
+  return c
+end
+
+local function printer(...)
+  local t = table.pack(...)
+  for i = 1, t.n do t[i] = tostring(t[i]) end
+  core.write(1, table.concat(t, "\t") .. "\n")
+end
+
+---Makes the environment; `folder` is the script's own folder (files beside the script), `model` makes models.
+function M.make(folder, model)
+  local loaded = {}
+  local env = {
+    assert = assert, error = error, ipairs = ipairs, select = select, tonumber = tonumber, tostring = tostring, type = type,
+    rawequal = rawequal, rawget = rawget, rawlen = rawlen, rawset = rawset, setmetatable = setmetatable,
+    getmetatable = function(v) if type(v) == "table" then return getmetatable(v) end end,
+    next = sorted_next, pairs = sorted_pairs, pcall = passing_stop(pcall), xpcall = passing_stop(xpcall), print = printer,
+    math = copy(math, { randomseed = true }), string = copy(string, { dump = true }), table = copy(table), utf8 = copy(utf8),
+    coroutine = copy(coroutine),
+  }
+  env._G = env
+  env.coroutine.resume = passing_stop(coroutine.resume)
+  math.randomseed(1, 0)
+  for _, name in ipairs { "exp", "log", "sqrt", "sin", "cos", "tanh", "abs", "min", "max", "where", "above", "below", "dx", "dy", "dz",
+    "grad", "gradsq", "laplacian", "div", "dot", "noise", "param", "derivative", "time" } do env[name] = formula[name] end
+  for _, name in ipairs { "grid", "wave", "place", "from_array", "from_image", "set" } do env[name] = grids[name] end
+  for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "domains", "domain_count",
+    "interface", "wavelength", "structure_factor", "now" } do env[name] = measure[name] end
+  for _, name in ipairs { "schedule", "quench", "ramp", "hold" } do env[name] = schedule[name] end
+  env.unit, env.degC, env.input, env.model = units.unit, units.degC, inputs.input, model
+
+  local function load_file(name)
+    local file = name .. ".lua"
+    if not core.has(folder, file) then
+      core.fail("require: there is no module '" .. name .. "' (bundled: thermo; or a file " .. file .. " beside the script)")
+    end
+    local chunk, message = core.load_text(core.read(folder, file), "@" .. file, env)
+    if not chunk then core.fail(message) end
+    return chunk(name)
+  end
+
+  function env.require(name)
+    if type(name) ~= "string" then core.fail("require: expected the name of a module") end
+    if bundled[name] then return require(name) end
+    if loaded[name] == nil then
+      loaded[name] = true
+      local v = load_file(name)
+      if v ~= nil then loaded[name] = v end
+    end
+    return loaded[name]
+  end
+
+  return setmetatable(env, {
+    __index = function(_, name)
+      core.fail("'" .. tostring(name) .. "' is not defined" .. text.hint(tostring(name), text.keys(env)))
+    end,
+    __metatable = false,
+  })
+end
+
+return M

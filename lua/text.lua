@@ -1,0 +1,72 @@
+-- Words and numbers for people.
+local core = require "core"
+
+local M = {}
+
+---Edits (Levenshtein 1966) between two words.
+---@param a string
+---@param b string
+---@return integer
+local function edits(a, b)
+  local row = {}
+  for j = 0, #b do row[j] = j end
+  for i = 1, #a do
+    local diagonal = row[0]
+    row[0] = i
+    for j = 1, #b do
+      local cost = a:sub(i, i) == b:sub(j, j) and 0 or 1
+      diagonal, row[j] = row[j], math.min(row[j] + 1, row[j - 1] + 1, diagonal + cost)
+    end
+  end
+  return row[#b]
+end
+
+---The name among `names` that `name` was probably meant to be, or nil.
+---@param name string
+---@param names string[]
+function M.nearest(name, names)
+  local best, least = nil, math.max(1, #name // 3) + 1
+  table.sort(names)
+  for _, n in ipairs(names) do
+    local d = edits(name:lower(), n:lower())
+    if d < least then best, least = n, d end
+  end
+  return best
+end
+
+---Keys of a table, sorted.
+function M.keys(t)
+  local keys = {}
+  for k in next, t do keys[#keys + 1] = k end
+  table.sort(keys, function(a, b)
+    if type(a) == type(b) and type(a) ~= "table" and type(a) ~= "userdata" and type(a) ~= "function" and type(a) ~= "boolean" then
+      return a < b
+    end
+    return type(a) < type(b)
+  end)
+  return keys
+end
+
+---"; did you mean 'x'?" or "".
+function M.hint(name, names)
+  local best = M.nearest(name, names)
+  return best and ("; did you mean '" .. best .. "'?") or ""
+end
+
+---A number with four digits.
+function M.number(x)
+  if x ~= x then return "-" end
+  return string.format("%.4g", x)
+end
+
+---A time: readable units in a run in real units, else a bare number.
+function M.time(t, real)
+  return real and core.time_text(t) or M.number(t)
+end
+
+---A length likewise.
+function M.length(l, real)
+  return real and core.length_text(l) or M.number(l)
+end
+
+return M
