@@ -1,1 +1,175 @@
-print("hi")
+-- The command line.
+local core = require "core"
+local text = require "text"
+local inputs = require "input"
+local run = require "run"
+local models = require "model"
+
+local usage = [[
+mottle: heat treatments of materials that unmix, from a Lua script to a measured run
+
+  mottle run SCRIPT [name=value ...]    run a script; name=value sets its inputs (T2=627degC, seed=3)
+      --into FOLDER    the run folder (default: the script's name with .run, in the present folder)
+      --replace        replace a run folder that exists
+      --threads N      threads (default: the machine's cores); results do not depend on it
+      --quiet          no progress, no summary
+  mottle plan SCRIPT [name=value ...]   what would be solved, at which scales, at what cost; nothing is run
+  mottle report FOLDER                  makes report.html of a run folder again
+  mottle --help, mottle --version
+
+Exit codes: 0 done; 2 the script or its input is wrong; 3 the run folder exists already; 4 a file could not be read or
+written; 5 out of memory or refused by the system; 6 the numerics failed (message says why); 130 stopped on request.
+]]
+
+local function usage_error(message)
+  core.write(2, "mottle: " .. message .. "\n\nTry mottle --help.\n")
+  return 2
+end
+
+-- Options of a command: flags with or without a value.
+local function parse(args, with_value, without)
+  local o, rest, names = {}, {}, {}
+  for k in next, with_value do names[#names + 1] = "--" .. k end
+  for k in next, without do names[#names + 1] = "--" .. k end
+  local i = 1
+  while i <= #args do
+    local name, value = args[i]:match("^%-%-([%w%-]+)=?(.*)$")
+    if name and without[name] then o[name] = true
+    elseif name and with_value[name] then
+      if value == "" then
+        i = i + 1
+        value = args[i]
+      end
+      if not value then return nil, "option --" .. name .. " needs a value" end
+      o[name] = value
+    elseif args[i]:sub(1, 1) == "-" and args[i] ~= "-" then
+      return nil, "unknown option " .. args[i] .. text.hint(args[i], names)
+    else rest[#rest + 1] = args[i] end
+    i = i + 1
+  end
+  return o, rest
+end
+
+local function split_path(path)
+  local folder, name = path:match("^(.*)/([^/]*)$")
+  if not folder then return ".", path end
+  return folder == "" and "/" or folder, name
+end
+
+local function use_threads(o)
+  local n = o.threads and tonumber(o.threads) or core.machine().cores
+  if not n or n ~= math.floor(n) or n < 1 or n > 256 then return nil, "--threads takes a whole number from 1 to 256, not '" .. o.threads .. "'" end
+  run.threads = math.tointeger(n)
+  core.threads(run.threads)
+  return true
+end
+
+local function take_inputs(rest)
+  for i = 2, #rest do
+    local name, value = rest[i]:match("^([%a_][%w_]*)=(.*)$")
+    if not name then return nil, "expected name=value after the script, found '" .. rest[i] .. "'" end
+    inputs.given[name] = value
+  end
+  return true
+end
+
+local function load_script(path)
+  local folder, name = split_path(path)
+  run.script, run.script_name = path, name
+  if not core.has(nil, path) then core.fail("there is no script '" .. path .. "'") end
+  run.script_text = core.read(nil, path)
+  local own = core.folder(folder, "open")
+  require("grid").folder = own
+  local env = require("sandbox").make(own, models.model)
+  local chunk, message = core.load_text(run.script_text, "@" .. name, env)
+  if not chunk then core.fail(message) end
+  return chunk
+end
+
+-- Lua's own messages (arithmetic on nil ...) carry the line already; ours do too.
+local function tidy(message)
+  message = tostring(message)
+  return (message:gsub("^%[string \"(.-)\"%]", "%1"))
+end
+
+local function run_command(args)
+  local o, rest = parse(args, { into = true, threads = true }, { replace = true, quiet = true })
+  if not o then return usage_error(rest) end
+  if not rest[1] then return usage_error("run: which script?") end
+  local ok, why = take_inputs(rest)
+  if ok then ok, why = use_threads(o) end
+  if not ok then return usage_error(why) end
+  run.quiet = o.quiet
+  run.path = o.into or (select(2, split_path(rest[1])):gsub("%.lua$", "") .. ".run")
+  function run.open_folder()
+    run.folder = core.folder(run.path, o.replace and "replace" or "make")
+    core.put(run.folder, "script.lua", run.script_text)
+  end
+  local chunk = load_script(rest[1])
+  run.began = core.clock()
+  local good, message = xpcall(chunk, function(e) return e end)
+  if not good then
+    run.close(tidy(message))
+    core.write(2, "mottle: " .. tidy(message) .. "\n")
+    local code = core.exit_code()
+    return code ~= 0 and code or 2
+  end
+  inputs.check()
+  run.close()
+  if not run.folder then
+    core.write(2, "mottle: the script ran to its end without a run (no m:run{...})\n")
+    return 0
+  end
+  if not run.quiet then core.write(1, require("report").words(run)) end
+  return 0
+end
+
+local function plan_command(args)
+  local o, rest = parse(args, { threads = true }, {})
+  if not o then return usage_error(rest) end
+  if not rest[1] then return usage_error("plan: which script?") end
+  local ok, why = take_inputs(rest)
+  if ok then ok, why = use_threads(o) end
+  if not ok then return usage_error(why) end
+  local done = {}
+  function run.plan(m, r, options)
+    core.write(1, require("plan").text(m, r, options))
+    error(done, 0) -- unwinds the script
+  end
+  local chunk = load_script(rest[1])
+  local good, message = xpcall(chunk, function(e) return e end)
+  if good then core.fail("the script ran to its end without a run, so there is nothing to plan") end
+  if message ~= done then
+    core.write(2, "mottle: " .. tidy(message) .. "\n")
+    local code = core.exit_code()
+    return code ~= 0 and code or 2
+  end
+  return 0
+end
+
+local function report_command(args)
+  local o, rest = parse(args, {}, {})
+  if not o then return usage_error(rest) end
+  if not rest[1] then return usage_error("report: which run folder?") end
+  for _, path in ipairs(rest) do core.write(1, require("report").rebuild(path) .. "\n") end
+  return 0
+end
+
+local commands = { run = run_command, plan = plan_command, report = report_command }
+
+return function(args)
+  local command = table.remove(args, 1)
+  for _, a in ipairs(args) do if a == "--help" then command = "--help" end end
+  if command == nil or command == "--help" or command == "-h" or command == "help" then
+    core.write(command and 1 or 2, usage)
+    return command and 0 or 2
+  end
+  if command == "--version" or command == "version" then
+    local m = core.machine()
+    core.write(1, string.format("mottle %s (%s, %s)\n", m.version, m.fftw, m.lua))
+    return 0
+  end
+  local f = commands[command]
+  if not f then return usage_error("unknown command '" .. command .. "'" .. text.hint(command, { "run", "plan", "report" })) end
+  return f(args)
+end

@@ -31,7 +31,7 @@ typedef struct mt_domains {
 /* above: cells with a > level, else the others. full: neighbours across edges and corners count too, else
  * faces only (for a picture of two phases: one phase full, the other by faces, else both may percolate at a
  * saddle or neither does). labels: NULL, or grid->cells numbers to be filled: 0 outside, domain 1 .. count
- * inside, numbered by first cell. ENOMEM (4 bytes per cell and 72 per piece while it works; 4 bytes per cell
+ * inside, numbered by first cell. ENOMEM (4 bytes per cell and 56 per piece while it works; 4 bytes per cell
  * less when labels are given). */
 MT_API mt_status mt_domains_find(const mt_grid *grid, const double *a, double level, bool above, bool full,
                                  int32_t *labels, mt_domains *out, mt_error *err) MT_MUST_USE;

@@ -4,8 +4,8 @@
 
 #include "core/base/memory.h"
 
-/* --- the net of cell centres
- * ------------------------------------------------------------------------------------------------ */
+/* --- the net of cell centres ------------------------------------------------------------------------------
+ */
 
 /* Corner i + d of a cube along one axis: index of its cell. Squares run from centre to centre; before the
  * first and behind the last centre of a mirror axis the reflected centre stands in, and half of that square
@@ -29,8 +29,7 @@ static double value(const mt_grid *g, const double *a, int x, int y, int z) {
     return a[((size_t)z * ny + (size_t)y) * nx + (size_t)x];
 }
 
-/* --- 1-D and 2-D
- * ----------------------------------------------------------------------------------------------------------------
+/* --- 1-D and 2-D ------------------------------------------------------------------------------------------
  */
 
 static double crossings(const mt_grid *g, const double *a, double level) {
@@ -93,8 +92,7 @@ static double length(const mt_grid *g, const double *a, double level) {
     return total;
 }
 
-/* --- 3-D
- * -------------------------------------------------------------------------------------------------------------------------
+/* --- 3-D --------------------------------------------------------------------------------------------------
  */
 
 typedef struct point3 {
@@ -175,13 +173,18 @@ double mt_interface_measure(const mt_grid *g, const double *a, double level) {
     return g->dim == 1 ? crossings(g, a, level) : g->dim == 2 ? length(g, a, level) : area(g, a, level);
 }
 
-/* --- width
- * -----------------------------------------------------------------------------------------------------------------------
+double mt_interface_spacing(const mt_grid *g, double measured) {
+    return measured > 0 ? g->volume / measured : NAN;
+}
+
+/* --- width ------------------------------------------------------------------------------------------------
  */
 
+#define STEP 0.25 /* cells, of a walk along the line: the interpolant does not turn twice within it */
+
 typedef struct series {
-    int modes;
-    double step; /* wavenumber of mode 1, per cell */
+    int modes, steps; /* of a walk along the whole line */
+    double step;      /* wavenumber of mode 1, per cell */
     double *a, *b;
 } series;
 
@@ -207,48 +210,65 @@ static double at(const series *s, double x) {
     return v;
 }
 
-/* Bisection between x (on one side of the level) and a step further on, walking in direction d until it is
- * passed. */
-static bool passes(const series *s, double x, double d, double level, int n, double *where) {
-    bool side = at(s, x) > level;
-    for (int i = 0; i < 4 * n; i++, x += d) {
-        if ((at(s, x + d) > level) == side) continue;
-        double low = x, high = x + d;
-        for (int k = 0; k < 60; k++) {
-            double mid = 0.5 * (low + high);
-            if ((at(s, mid) > level) == side)
-                low = mid;
-            else
-                high = mid;
+static double bisect(const series *s, double low, double high, double level) {
+    bool side = at(s, low) > level;
+    for (int k = 0; k < 60; k++) {
+        double mid = 0.5 * (low + high);
+        if ((at(s, mid) > level) == side)
+            low = mid;
+        else
+            high = mid;
+    }
+    return 0.5 * (low + high);
+}
+
+/* Walks from x in steps d until the line passes `level`, in at most one length of the line; gives up where it
+ * passes `barrier` first (NaN: none). */
+static bool passes(const series *s, double x, double d, double level, double barrier, double *where) {
+    double before = at(s, x);
+    for (int i = 0; i < s->steps; i++, x += d) {
+        double next = at(s, x + d);
+        if ((next > level) != (before > level)) {
+            *where = bisect(s, x, x + d, level);
+            return true;
         }
-        *where = 0.5 * (low + high);
-        return true;
+        if ((next > barrier) != (before > barrier) && i > 0) return false;
+        before = next;
     }
     return false;
 }
 
-static bool width_of(const series *s, int n, double low, double high, double *width) {
+static bool width_of(const series *s, double low, double high, double *width) {
     double middle, p, q, half = 0.5 * (low + high);
-    if (!passes(s, 0.5, 0.25, half, n, &middle)) return false;
-    bool rising = at(s, middle + 0.05) > half;
-    double ten = low + 0.1 * (high - low), ninety = low + 0.9 * (high - low);
-    if (!passes(s, middle, -0.25, rising ? ten : ninety, n, &p)) return false;
-    if (!passes(s, middle, 0.25, rising ? ninety : ten, n, &q)) return false;
+    if (!passes(s, 0.5, STEP, half, NAN, &middle)) return false;
+    double before = low + 0.1 * (high - low), behind = low + 0.9 * (high - low);
+    if ((at(s, middle + 0.01) > half) != (behind > before)) { /* falling */
+        double swap = before;
+        before = behind;
+        behind = swap;
+    }
+    if (!passes(s, middle, -STEP, before, half, &p)) return false;
+    if (!passes(s, middle, STEP, behind, half, &q)) return false;
     *width = q - p;
     return true;
 }
 
 mt_status mt_interface_width(int n, double h, mt_wall wall, const double *a, double low, double high,
                              double *width, mt_error *err) {
-    series s = {0};
+    series s = {.steps = (int)(n / STEP)};
+    *width = NAN;
+    MT_REQUIRE(n > 0 && h > 0, err);
     mt_status st = mt_new(&s.a, (size_t)n, sizeof(double), "a line", err);
     if (!st) st = mt_new(&s.b, (size_t)n, sizeof(double), "a line", err);
     if (!st) {
         analyse(&s, n, wall, a);
-        if (!width_of(&s, n, low, high, width))
-            st = mt_fail(err, MT_EINPUT, "the line does not pass from %.4g to %.4g: there is no interface",
+        if (width_of(&s, low, high, width))
+            *width *= h;
+        else
+            st = mt_fail(err, MT_EINPUT,
+                         "the line does not pass from 10 %% to 90 %% between %.4g and %.4g around its first "
+                         "middle: there is no interface to measure the width of; give the two plateaus",
                          low, high);
-        *width *= h;
     }
     mt_free(s.a), mt_free(s.b);
     return st;

@@ -5,7 +5,10 @@
 #include "core/base/memory.h"
 
 #define CLASSES 256
-#define REACH 9 /* three standard deviations of the smoothing */
+#define SPREAD 3.0 /* standard deviation of the smoothing, classes */
+#define REACH 9    /* where the smoothing ends */
+
+static const double pi = 3.14159265358979323846;
 
 static void extremes(const mt_grid *g, const double *a, mt_statistics *out) {
     out->minimum = out->maximum = a[0];
@@ -33,24 +36,47 @@ void mt_statistics_of(const mt_grid *g, const double *a, mt_statistics *out) {
     out->integral = sum * g->cell_volume;
     out->variance = sum_of_rows(g, a, out->mean, true) / (double)g->cells;
     extremes(g, a, out);
-    if (isnan(sum)) out->minimum = out->maximum = NAN;
+    if (isnan(sum)) {
+        out->minimum = out->maximum = NAN;
+        out->minimum_cell = out->maximum_cell = 0;
+    }
 }
 
-/* --- histogram
- * -----------------------------------------------------------------------------------------------------------------
- */
+/* --- histogram --------------------------------------------------------------------------------------------
+ *
+ * Places are in classes from the minimum; class c holds c .. c + 1. */
 
-static void smooth(const double *count, double *s) {
+typedef struct histogram {
+    double count[CLASSES]; /* cells */
+    double place[CLASSES]; /* mean place of the cells */
+    double smooth[CLASSES];
+} histogram;
+
+static double kernel(double d) {
+    return exp(-d * d / (2 * SPREAD * SPREAD));
+}
+
+static void fill(const mt_grid *g, const double *a, double from, double range, histogram *h) {
+    for (size_t i = 0; i < g->cells; i++) {
+        double x = (a[i] - from) / range * CLASSES;
+        int c = x < CLASSES ? (int)x : CLASSES - 1;
+        h->count[c]++;
+        h->place[c] += x;
+    }
+    for (int c = 0; c < CLASSES; c++)
+        if (h->count[c] > 0) h->place[c] /= h->count[c];
+}
+
+static void smooth(histogram *h) {
     double weight[REACH + 1], total = 0;
     for (int d = 0; d <= REACH; d++) {
-        weight[d] = exp(-d * d / 18.0);
+        weight[d] = kernel(d);
         total += d ? 2 * weight[d] : weight[d];
     }
-    for (int i = 0; i < CLASSES; i++) {
-        s[i] = 0;
+    for (int i = 0; i < CLASSES; i++)
         for (int d = -REACH; d <= REACH; d++)
-            if (i + d >= 0 && i + d < CLASSES) s[i] += count[i + d] * weight[d < 0 ? -d : d] / total;
-    }
+            if (i + d >= 0 && i + d < CLASSES)
+                h->smooth[i] += h->count[i + d] * weight[d < 0 ? -d : d] / total;
 }
 
 static bool is_peak(const double *s, int i) {
@@ -63,50 +89,71 @@ static double valley(const double *s, int i, int j) {
     return low;
 }
 
-/* Place of the maximum in classes, by a parabola through three smoothed counts. */
-static double refined(const double *s, int i) {
-    if (i == 0 || i == CLASSES - 1) return i + 0.5;
-    double bend = s[i - 1] - 2 * s[i] + s[i + 1];
-    return i + 0.5 + (bend < 0 ? 0.5 * (s[i - 1] - s[i + 1]) / bend : 0);
+/* A smoothed count s of independent cells has variance s / (2 sqrt(pi) SPREAD): the sum of squared weights.
+ */
+static bool parted(double peak, double low) {
+    double deviation = sqrt((peak + low) / (2 * sqrt(pi) * SPREAD));
+    return low < 0.7 * peak && peak - low > 6 * deviation;
+}
+
+static int first_peak(const double *s) {
+    int best = 0;
+    for (int i = 1; i < CLASSES; i++)
+        if (s[i] > s[best]) best = i;
+    return best;
 }
 
 static int second_peak(const double *s, int first) {
     int best = -1;
     for (int i = 0; i < CLASSES; i++) {
         if (i == first || !is_peak(s, i) || (best >= 0 && s[i] <= s[best])) continue;
-        if (valley(s, i, first) < 0.7 * s[i]) best = i;
+        if (parted(s[i], valley(s, i, first))) best = i;
     }
     return best;
 }
 
+/* Mean shift from the middle of class i to the mode of the estimate without classes. */
+static double mode_near(const histogram *h, int i) {
+    double x = i + 0.5;
+    for (int step = 0; step < 100; step++) {
+        double sum = 0, weight = 0;
+        for (int c = 0; c < CLASSES; c++) {
+            double w = h->count[c] > 0 ? h->count[c] * kernel(h->place[c] - x) : 0;
+            sum += w * h->place[c];
+            weight += w;
+        }
+        double next = sum / weight;
+        if (fabs(next - x) < 1e-12 * CLASSES) return next;
+        x = next;
+    }
+    return x;
+}
+
+static void read_peaks(const histogram *h, double from, double range, mt_peaks *out) {
+    int first = first_peak(h->smooth), second = second_peak(h->smooth, first);
+    if (second < 0) return;
+    double p = mode_near(h, first), q = mode_near(h, second);
+    out->two = true;
+    out->low = from + fmin(p, q) * range / CLASSES;
+    out->high = from + fmax(p, q) * range / CLASSES;
+    out->amplitude = out->high - out->low;
+    out->level = 0.5 * (out->low + out->high);
+}
+
 mt_status mt_peaks_of(const mt_grid *g, const double *a, mt_peaks *out, mt_error *err) {
     mt_statistics st;
-    double *count;
-    int first = 0;
+    histogram *h;
     mt_statistics_of(g, a, &st);
     double half = sqrt(2 * st.variance), range = st.maximum - st.minimum;
     *out = (mt_peaks){false, st.mean - half, st.mean + half, 2 * half, st.mean};
+    if (range == 0) *out = (mt_peaks){false, a[0], a[0], 0, a[0]};
     if (!(range > 0) || isinf(range)) return MT_OK;
-    mt_status status = mt_new(&count, 2 * CLASSES, sizeof *count, "a histogram", err);
+    mt_status status = mt_new(&h, 1, sizeof *h, "a histogram", err);
     if (status) return status;
-    double *s = count + CLASSES;
-    for (size_t i = 0; i < g->cells; i++) {
-        int c = (int)((a[i] - st.minimum) / range * CLASSES);
-        count[c < CLASSES ? c : CLASSES - 1]++;
-    }
-    smooth(count, s);
-    for (int i = 0; i < CLASSES; i++)
-        if (s[i] > s[first]) first = i;
-    int second = second_peak(s, first);
-    if (second >= 0) {
-        int lower = first < second ? first : second, upper = first < second ? second : first;
-        out->two = true;
-        out->low = st.minimum + refined(s, lower) * range / CLASSES;
-        out->high = st.minimum + refined(s, upper) * range / CLASSES;
-        out->amplitude = out->high - out->low;
-        out->level = 0.5 * (out->low + out->high);
-    }
-    mt_free(count);
+    fill(g, a, st.minimum, range, h);
+    smooth(h);
+    read_peaks(h, st.minimum, range, out);
+    mt_free(h);
     return MT_OK;
 }
 

@@ -13,8 +13,9 @@ typedef struct shells {
     mt_structure *out;
 } shells;
 
+/* Cosine modes lie on the bounds of shells; the small term keeps rounding from choosing sides. */
 static void add_mode(shells *x, double k, double s, double count) {
-    int shell = (int)(k / x->width + 0.5);
+    int shell = (int)(k / x->width + 0.5 + 1e-9);
     x->total += count * s;
     if (shell < 1 || shell > x->out->shells) return;
     x->out->k[shell - 1] += count * k;
@@ -44,33 +45,42 @@ static void add_column(shells *x, const double *column, const int mode[3]) {
     }
 }
 
-static void read_lengths(mt_structure *t) {
-    double ks = 0, sum = 0;
-    int top = 0;
+static void average(mt_structure *t) {
     for (int i = 0; i < t->shells; i++) {
-        if (t->modes[i] > 0) t->k[i] /= t->modes[i], t->s[i] /= t->modes[i];
-        ks += t->k[i] * t->s[i];
-        sum += t->s[i];
+        if (t->modes[i] > 0)
+            t->k[i] /= t->modes[i], t->s[i] /= t->modes[i];
+        else
+            t->k[i] = (i + 1) * t->width;
+    }
+}
+
+static double first_moment(const mt_structure *t) {
+    double ks = 0, sum = 0;
+    for (int i = 0; i < t->shells; i++) ks += t->k[i] * t->s[i], sum += t->s[i];
+    return sum > 0 ? ks / sum : NAN;
+}
+
+/* Maximum of the parabola through (k, log S) of three shells, not evenly spaced (Lagrange); the highest shell
+ * itself where there is none. */
+static double peak_of(const mt_structure *t) {
+    int top = 0;
+    for (int i = 0; i < t->shells; i++)
         if (t->s[i] > t->s[top]) top = i;
-    }
-    t->first = sum > 0 ? ks / sum : NAN;
-    t->wavelength = 2 * pi / t->first;
-    double shift = 0;
-    if (top > 0 && top < t->shells - 1 && t->s[top - 1] > 0 && t->s[top + 1] > 0) {
-        double l = log(t->s[top - 1]), c = log(t->s[top]), r = log(t->s[top + 1]);
-        if (l - 2 * c + r < 0) shift = 0.5 * (l - r) / (l - 2 * c + r);
-    }
-    double step = shift < 0 ? t->k[top] - t->k[top > 0 ? top - 1 : 0]
-                            : t->k[top < t->shells - 1 ? top + 1 : top] - t->k[top];
-    t->peak = sum > 0 ? 2 * pi / (t->k[top] + shift * step) : NAN;
+    if (!(t->s[top] > 0)) return NAN;
+    const double *k = t->k + top, *s = t->s + top;
+    if (top == 0 || top == t->shells - 1 || !(s[-1] > 0) || !(s[1] > 0)) return k[0];
+    double a = k[-1] - k[0], b = k[1] - k[0], u = log(s[-1] / s[0]), v = log(s[1] / s[0]);
+    double curve = (v / b - u / a) / (b - a), slope = u / a - curve * a;
+    return curve < 0 ? k[0] - 0.5 * slope / curve : k[0];
 }
 
 static mt_status make_shells(const mt_grid *g, double width, mt_structure *out, mt_error *err) {
     double nyquist = INFINITY;
     for (int a = 0; a < g->dim; a++)
         if (g->n[a] > 1) nyquist = fmin(nyquist, pi / g->h[a]);
-    out->shells = isfinite(nyquist) ? (int)(nyquist / width - 0.5) : 0;
+    out->shells = isfinite(nyquist) ? (int)(nyquist / width - 0.5 + 1e-9) : 0;
     if (out->shells < 1) out->shells = 1;
+    out->width = width;
     size_t n = (size_t)out->shells;
     mt_status st = mt_new(&out->k, n, sizeof(double), "the structure factor", err);
     if (!st) st = mt_new(&out->s, n, sizeof(double), "the structure factor", err);
@@ -84,7 +94,9 @@ mt_status mt_structure_of(mt_sweeper *sweeper, const double *a, mt_structure *ou
     double *u = NULL, *work = NULL, longest = 0;
     int mode[3];
     memset(out, 0, sizeof *out);
-    for (int i = 0; i < g->dim; i++) longest = fmax(longest, g->n[i] * g->h[i]);
+    for (int i = 0; i < g->dim; i++)
+        if (g->n[i] > 1) longest = fmax(longest, g->n[i] * g->h[i]);
+    if (!(longest > 0)) longest = g->h[0]; /* a single cell: no modes */
     shells x = {.s = s, .width = 2 * pi / longest, .out = out};
     mt_status st = make_shells(g, x.width, out, err);
     if (!st) st = mt_new(&u, s->doubles, sizeof *u, "the structure factor", err);
@@ -100,7 +112,10 @@ mt_status mt_structure_of(mt_sweeper *sweeper, const double *a, mt_structure *ou
         return st;
     }
     out->variance = x.total / g->volume;
-    read_lengths(out);
+    average(out);
+    out->first = first_moment(out);
+    out->wavelength = 2 * pi / out->first;
+    out->peak = 2 * pi / peak_of(out);
     return MT_OK;
 }
 

@@ -1,4 +1,4 @@
-/* Transforms of single lines along one axis, in place in a contiguous buffer, with the conventions of
+/* Transforms of single lines along one axis, from one contiguous buffer to another, with the conventions of
  * spectrum.h except that the factor 1/n of periodic axes is left to the caller. Internal to core/space. */
 #ifndef MT_SPACE_LINE_H
 #define MT_SPACE_LINE_H
@@ -21,23 +21,19 @@ typedef struct mt_line {
     fftw_plan forward[2], inverse[2]; /* [1]: odd, mirror only */
 } mt_line;
 
-/* Doubles of a buffer for one line (multiple of 8; complex MIRROR lines use half of it as scratch). */
+/* Doubles of a buffer for one line, a multiple of 8. Of real data only the first n are touched, of HALF modes
+ * only the first 2 modes. */
 size_t mt_line_room(const mt_line *line);
 
-mt_status mt_line_plan(mt_line *line, mt_line_kind kind, int n, bool complex, mt_error *err);
+/* aligned: all buffers will start at multiples of 16 bytes. FFTW's planner is not thread-safe, so planning
+ * and freeing are serialised here. Fails with ENOMEM or ESYSTEM; the line may be freed then too. */
+mt_status mt_line_plan(mt_line *line, mt_line_kind kind, int n, bool complex, bool aligned,
+                       mt_error *err) MT_MUST_USE;
 void mt_line_free(mt_line *line);
 
-/* buf: n values -> modes values, and back. Projects the Nyquist mode and the forbidden sine modes out, both
- * ways. */
-void mt_line_forward(const mt_line *line, bool odd, double *buf);
-void mt_line_inverse(const mt_line *line, bool odd, double *buf);
-
-/* FFTW's planner is not thread-safe: everything that plans holds this lock. */
-void mt_plan_lock(void);
-void mt_plan_unlock(void);
-
-/* Scale and order of FFTW's cosine and sine lines <-> coefficients, in place (see line.c). */
-void mt_mirror_to_modes(int n, bool odd, double *a);
-void mt_mirror_from_modes(int n, bool odd, double *a);
+/* forward: n values -> modes values, inverse: back. `from` is spent and does not overlap `to`. The Nyquist
+ * mode and the forbidden sine modes are projected out both ways. */
+void mt_line_forward(const mt_line *line, bool odd, double *from, double *to);
+void mt_line_inverse(const mt_line *line, bool odd, double *from, double *to);
 
 #endif

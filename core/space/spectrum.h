@@ -37,8 +37,8 @@ typedef struct mt_spectrum {
     double *k[3];        /* k[axis][m], m < modes[axis]: wavenumber (rad per length) */
     double *weight[3];   /* weight[axis][m] of an even array: mean(u^2) = sum of |u^_m|^2 times the product of
                             weights:   half axis 1 at m = 0 and 2 above; other periodic axes 1; mirror 1 at m =
-                            0   and 1/2 above.   (For an array that is odd along an axis, its mode 0 is stored as
-                            0,   so weights hold too.) */
+                            0   and 1/2 above.   (For an array that is odd along an axis, its mode 0 is stored
+                            as   0,   so weights hold too.) */
 } mt_spectrum;
 
 /* Inner mode numbers of column j: modes[a] is set for every axis but the outer, 0 there. */

@@ -20,11 +20,10 @@ struct mt_sweeper {
     mt_spectrum s;
     int workers;
     mt_line axis[3];
-    fftw_plan row_forward, row_inverse; /* x, HALF: between a work row and a unit row, out of place */
-    bool inner_complex;                 /* mixed data are complex */
-    size_t inner_cells;                 /* cells of a slab: all inner axes at one place of the outer one */
-    size_t ld;                          /* doubles from slab to slab of a work array */
-    size_t plane_ld; /* doubles from row to row of a 3-D plane buffer; 0 without a y pass */
+    bool inner_complex; /* mixed data are complex */
+    size_t inner_cells; /* cells of a slab: all inner axes at one place of the outer one */
+    size_t ld;          /* doubles from slab to slab of a work array */
+    size_t plane_ld;    /* doubles from row to row of a 3-D plane buffer; 0 without a y pass */
     size_t work_doubles;
     int rows_per_unit;
     size_t units, blocks;
@@ -87,6 +86,11 @@ static mt_status fill_tables(mt_sweeper *w, int axis, mt_error *err) {
     return st;
 }
 
+/* Rows of odd length start at odd doubles of a unit's buffer. */
+static bool is_aligned(const mt_grid *g, int axis, int outer) {
+    return axis == outer || axis > 0 || g->n[0] % 2 == 0;
+}
+
 static mt_status lay_out(mt_sweeper *w, mt_error *err) {
     mt_spectrum *s = &w->s;
     const mt_grid *g = w->grid;
@@ -101,7 +105,8 @@ static mt_status lay_out(mt_sweeper *w, mt_error *err) {
     w->scale = 1;
     for (int a = 0; a < 3 && !st; a++) {
         if (a == s->outer) w->inner_complex = complex;
-        st = mt_line_plan(&w->axis[a], kind_of(g, a, s->half), g->n[a], complex, err);
+        st = mt_line_plan(&w->axis[a], kind_of(g, a, s->half), g->n[a], complex, is_aligned(g, a, s->outer),
+                          err);
         complex = complex || a == s->half;
         s->modes[a] = w->axis[a].modes;
         if (g->wall[a] == MT_PERIODIC) w->scale /= g->n[a];
@@ -135,28 +140,6 @@ static void size_work(mt_sweeper *w) {
     w->blocks = (s->columns + MT_BLOCK - 1) / MT_BLOCK;
 }
 
-/* Rows of odd length start at odd doubles of the unit buffer, so these plans must not count on alignment
- * then. */
-static mt_status plan_rows(mt_sweeper *w, mt_error *err) {
-    int n = w->grid->n[0];
-    double *real, *half;
-    unsigned flags = FFTW_ESTIMATE | (n % 2 ? FFTW_UNALIGNED : 0);
-    if (w->s.outer == 0 || w->axis[0].kind != MT_LINE_HALF) return MT_OK;
-    mt_status st = mt_new(&real, (size_t)n, sizeof *real, "a line", err);
-    if (st) return st;
-    st = mt_new(&half, mt_line_room(&w->axis[0]), sizeof *half, "a line", err);
-    if (!st) {
-        mt_plan_lock();
-        w->row_forward = fftw_plan_dft_r2c_1d(n, real, (fftw_complex *)half, flags | FFTW_DESTROY_INPUT);
-        w->row_inverse = fftw_plan_dft_c2r_1d(n, (fftw_complex *)half, real, flags | FFTW_DESTROY_INPUT);
-        mt_plan_unlock();
-        if (!w->row_forward || !w->row_inverse)
-            st = mt_fail(err, MT_ESYSTEM, "FFTW has no plan for a row of %d cells", n);
-    }
-    mt_free(real), mt_free(half);
-    return st;
-}
-
 mt_status mt_sweeper_new(mt_sweeper **out, mt_grid *grid, mt_pool *pool, mt_error *err) {
     mt_sweeper *w;
     *out = NULL;
@@ -166,10 +149,7 @@ mt_status mt_sweeper_new(mt_sweeper **out, mt_grid *grid, mt_pool *pool, mt_erro
     w->pool = pool;
     w->workers = mt_pool_threads(pool);
     st = lay_out(w, err);
-    if (!st) {
-        size_work(w);
-        st = plan_rows(w, err);
-    }
+    if (!st) size_work(w);
     if (!st) st = mt_new(&w->buffer, (size_t)w->workers, sizeof *w->buffer, "transforms", err);
     if (st) mt_sweeper_free(&w);
     *out = w;
@@ -187,10 +167,6 @@ void mt_sweeper_free(mt_sweeper **sweeper) {
         mt_free(w->s.k[a]);
         mt_free(w->s.weight[a]);
     }
-    mt_plan_lock();
-    if (w->row_forward) fftw_destroy_plan(w->row_forward);
-    if (w->row_inverse) fftw_destroy_plan(w->row_inverse);
-    mt_plan_unlock();
     mt_grid_unref(&w->grid);
     mt_free(w);
 }
@@ -217,8 +193,8 @@ typedef struct block {
     size_t n, count, width, step, room;
 } block;
 
-/* Rows this far ahead are asked for: in 3-D every row lies on a page of its own, where the processor does not look
- * ahead by itself. */
+/* Rows this far ahead are asked for: in 3-D every row lies on a page of its own, where the processor does not
+ * look ahead by itself. */
 #define AHEAD 8
 
 static inline void ask_for(const double *from) {
@@ -240,7 +216,7 @@ static inline void move_pair(double *to, const double *from, double scale) {
 static inline void gather_rows(const block *b, size_t count, const double *from, double scale, double *buf) {
     for (size_t i = 0; i < b->n; i++) {
         const double *row = from + i * b->step;
-        ask_for(row + AHEAD * b->step);
+        if (i + AHEAD < b->n) ask_for(row + AHEAD * b->step);
         for (size_t l = 0; l < count; l++) {
             if (b->width == 2)
                 move_pair(buf + l * b->room + 2 * i, row + 2 * l, scale);
@@ -283,88 +259,58 @@ static bool is_odd(mt_parities p, int axis) {
     return (p >> axis) & 1;
 }
 
-static void row_inverse(const mt_sweeper *w, mt_parities p, double *modes, double *cells) {
-    int n = w->grid->n[0];
-    switch (w->axis[0].kind) {
-    case MT_LINE_NONE: cells[0] = is_odd(p, 0) ? 0 : modes[0]; return;
-    case MT_LINE_HALF:
-        if (n % 2 == 0) modes[n] = modes[n + 1] = 0;
-        fftw_execute_dft_c2r(w->row_inverse, (fftw_complex *)modes, cells);
-        return;
-    default: /* the plan of the line is in place and aligned: transform in the work row, then copy */
-        mt_line_inverse(&w->axis[0], is_odd(p, 0), modes);
-        memcpy(cells, modes, (size_t)n * sizeof *cells);
-    }
-}
-
-static void row_forward(const mt_sweeper *w, mt_parities p, double *cells, double *modes) {
-    int n = w->grid->n[0];
-    switch (w->axis[0].kind) {
-    case MT_LINE_NONE: modes[0] = is_odd(p, 0) ? 0 : cells[0]; return;
-    case MT_LINE_HALF:
-        fftw_execute_dft_r2c(w->row_forward, cells, (fftw_complex *)modes);
-        if (n % 2 == 0) modes[n] = modes[n + 1] = 0;
-        return;
-    default:
-        memcpy(modes, cells, (size_t)n * sizeof *cells);
-        mt_line_forward(&w->axis[0], is_odd(p, 0), modes);
-    }
-}
-
 /* y lines of a plane, MT_BLOCK at a time; the plane holds x modes in rows of plane_ld, the slab y modes in
- * rows of x modes. */
+ * rows of x modes. lines: room for two blocks. */
 static void plane_pass(const mt_sweeper *w, bool forward, mt_parities p, double *plane, double *slab,
-                       double *buf) {
+                       double *lines) {
     const mt_line *y = &w->axis[1];
-    size_t columns = (size_t)w->s.modes[0], in_width = y->complex ? 2 : 1;
+    size_t columns = (size_t)w->s.modes[0], room = mt_line_room(y), in_width = y->complex ? 2 : 1;
     size_t out_width = y->complex || y->kind == MT_LINE_HALF ? 2 : 1;
+    double *to = lines + MT_BLOCK * room;
     for (size_t c = 0; c < columns; c += MT_BLOCK) {
         size_t count = columns - c < MT_BLOCK ? columns - c : MT_BLOCK;
-        block in = {(size_t)y->n, count, in_width, w->plane_ld, mt_line_room(y)};
-        block out = {(size_t)y->modes, count, out_width, columns * out_width, mt_line_room(y)};
-        if (forward)
-            gather(&in, plane + c * in_width, 1, buf);
-        else
-            gather(&out, slab + c * out_width, 1, buf);
-        for (size_t l = 0; l < count; l++) {
-            if (forward)
-                mt_line_forward(y, is_odd(p, 1), buf + l * in.room);
-            else
-                mt_line_inverse(y, is_odd(p, 1), buf + l * in.room);
+        block in = {(size_t)y->n, count, in_width, w->plane_ld, room};
+        block out = {(size_t)y->modes, count, out_width, columns * out_width, room};
+        if (forward) {
+            gather(&in, plane + c * in_width, 1, lines);
+            for (size_t l = 0; l < count; l++)
+                mt_line_forward(y, is_odd(p, 1), lines + l * room, to + l * room);
+            scatter(&out, to, slab + c * out_width);
+        } else {
+            gather(&out, slab + c * out_width, 1, lines);
+            for (size_t l = 0; l < count; l++)
+                mt_line_inverse(y, is_odd(p, 1), lines + l * room, to + l * room);
+            scatter(&in, to, plane + c * in_width);
         }
-        if (forward)
-            scatter(&out, buf, slab + c * out_width);
-        else
-            scatter(&in, buf, plane + c * in_width);
     }
 }
 
 static void slab_inverse(const mt_sweeper *w, mt_parities p, double *slab, double *cells, double *scratch) {
     size_t nx = (size_t)w->grid->n[0];
     if (!w->plane_ld) {
-        row_inverse(w, p, slab, cells);
+        mt_line_inverse(&w->axis[0], is_odd(p, 0), slab, cells);
         return;
     }
     double *plane = scratch, *buf = scratch + w->plane_ld * (size_t)w->grid->n[1];
     plane_pass(w, false, p, plane, slab, buf);
     for (size_t y = 0; y < (size_t)w->grid->n[1]; y++)
-        row_inverse(w, p, plane + y * w->plane_ld, cells + y * nx);
+        mt_line_inverse(&w->axis[0], is_odd(p, 0), plane + y * w->plane_ld, cells + y * nx);
 }
 
 static void slab_forward(const mt_sweeper *w, mt_parities p, double *cells, double *slab, double *scratch) {
     size_t nx = (size_t)w->grid->n[0];
     if (!w->plane_ld) {
-        row_forward(w, p, cells, slab);
+        mt_line_forward(&w->axis[0], is_odd(p, 0), cells, slab);
         return;
     }
     double *plane = scratch, *buf = scratch + w->plane_ld * (size_t)w->grid->n[1];
     for (size_t y = 0; y < (size_t)w->grid->n[1]; y++)
-        row_forward(w, p, cells + y * nx, plane + y * w->plane_ld);
+        mt_line_forward(&w->axis[0], is_odd(p, 0), cells + y * nx, plane + y * w->plane_ld);
     plane_pass(w, true, p, plane, slab, buf);
 }
 
 static size_t slab_scratch(const mt_sweeper *w) {
-    return w->plane_ld ? w->plane_ld * (size_t)w->grid->n[1] + MT_BLOCK * mt_line_room(&w->axis[1]) : 0;
+    return w->plane_ld ? w->plane_ld * (size_t)w->grid->n[1] + 2 * MT_BLOCK * mt_line_room(&w->axis[1]) : 0;
 }
 
 /* --- the row sweep
@@ -484,33 +430,36 @@ static mt_column describe(const mt_sweeper *w, size_t index) {
     return c;
 }
 
-static void load_block(const sweep *x, int i, size_t first, const block *b, double *buf) {
+/* stage: room for one block, for every input and output in turn. */
+static void load_block(const sweep *x, int i, size_t first, const block *b, double *stage, double *modes) {
     const mt_sweeper *w = x->w;
     const mt_line *line = &w->axis[w->s.outer];
     bool odd = is_odd(x->in_parity[i], w->s.outer);
-    gather(b, x->in[i] + first * b->width, w->scale, buf);
-    for (size_t l = 0; l < b->count; l++) mt_line_forward(line, odd, buf + l * b->room);
+    gather(b, x->in[i] + first * b->width, w->scale, stage);
+    for (size_t l = 0; l < b->count; l++)
+        mt_line_forward(line, odd, stage + l * b->room, modes + l * b->room);
 }
 
-static void store_block(const sweep *x, int i, size_t first, const block *b, double *buf) {
+static void store_block(const sweep *x, int i, size_t first, const block *b, double *modes, double *stage) {
     const mt_sweeper *w = x->w;
     const mt_line *line = &w->axis[w->s.outer];
     bool odd = is_odd(x->out_parity[i], w->s.outer);
-    for (size_t l = 0; l < b->count; l++) mt_line_inverse(line, odd, buf + l * b->room);
-    scatter(b, buf, x->out[i] + first * b->width);
+    for (size_t l = 0; l < b->count; l++)
+        mt_line_inverse(line, odd, modes + l * b->room, stage + l * b->room);
+    scatter(b, stage, x->out[i] + first * b->width);
 }
 
 static mt_status column_job(void *ctx, size_t index, int worker, mt_error *err) {
     const sweep *x = ctx;
     const mt_sweeper *w = x->w;
     const mt_line *line = &w->axis[w->s.outer];
-    double *in[MOST_ARRAYS], *out[MOST_ARRAYS], *at = w->buffer[worker].at;
+    double *in[MOST_ARRAYS], *out[MOST_ARRAYS], *stage = w->buffer[worker].at;
     size_t first = index * MT_BLOCK, count = w->s.columns - first, room = mt_line_room(line);
     size_t bytes = (size_t)w->s.length * (w->s.complex ? 2 : 1) * sizeof(double);
     if (count > MT_BLOCK) count = MT_BLOCK;
     block b = {(size_t)line->n, count, w->inner_complex ? 2 : 1, w->ld, room};
-    double *outs = at + (size_t)x->nin * MT_BLOCK * room;
-    for (int i = 0; i < x->nin; i++) load_block(x, i, first, &b, at + (size_t)i * MT_BLOCK * room);
+    double *at = stage + MT_BLOCK * room, *outs = at + (size_t)x->nin * MT_BLOCK * room;
+    for (int i = 0; i < x->nin; i++) load_block(x, i, first, &b, stage, at + (size_t)i * MT_BLOCK * room);
     for (size_t l = 0; l < count; l++) {
         mt_column c = describe(w, first + l);
         for (int i = 0; i < x->nin; i++) in[i] = at + ((size_t)i * MT_BLOCK + l) * room;
@@ -522,7 +471,7 @@ static mt_status column_job(void *ctx, size_t index, int worker, mt_error *err) 
         for (int i = 0; i < x->nout; i++)
             if (inner_dropped(w, x->out_parity[i], c.mode)) memset(out[i], 0, bytes);
     }
-    for (int i = 0; i < x->nout; i++) store_block(x, i, first, &b, outs + (size_t)i * MT_BLOCK * room);
+    for (int i = 0; i < x->nout; i++) store_block(x, i, first, &b, outs + (size_t)i * MT_BLOCK * room, stage);
     return MT_OK;
 }
 
@@ -539,7 +488,8 @@ mt_status mt_sweep_columns(mt_sweeper *w, int nin, double *const in[], const mt_
     x.column = body;
     x.ctx = ctx;
     mt_status st = check_arrays(nin, nout, err);
-    if (!st) st = reserve(w, (size_t)(nin + nout) * MT_BLOCK * mt_line_room(&w->axis[w->s.outer]) + 8, err);
+    if (!st)
+        st = reserve(w, (size_t)(nin + nout + 1) * MT_BLOCK * mt_line_room(&w->axis[w->s.outer]) + 8, err);
     return st ? st : mt_pool_run(w->pool, w->blocks, column_job, &x, err);
 }
 

@@ -1,0 +1,285 @@
+-- The run: events in order, ledger, pictures, progress, summary.
+local core = require "core"
+local text = require "text"
+local units = require "unit"
+local measure = require "measure"
+local schedule = require "schedule"
+local models = require "model"
+local inputs = require "input"
+local formula = require "formula"
+local report = require "report"
+
+-- What the program says about where things go; filled by cli.
+local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {} }
+
+local clock_model
+measure.clock = function() return clock_model and clock_model.time or 0 end
+
+local function real() return units.used end
+
+local time_scale, time_unit = 1, ""
+
+local function choose_time_unit(total)
+  time_scale, time_unit = 1, ""
+  if not real() then return end
+  for _, u in ipairs { { 3 * 86400, 86400, "d" }, { 2 * 3600, 3600, "h" }, { 300, 60, "min" }, { 0, 1, "s" } } do
+    if total >= u[1] then
+      time_scale, time_unit = u[2], u[3]
+      return
+    end
+  end
+end
+
+local scheduled = {} -- params that follow a schedule: temperatures
+function models.param_unit(p) return real() and scheduled[p] and "K" or "" end
+
+-- --- ledger -----------------------------------------------------------------------------------------------------------------
+
+local function default_columns(m)
+  local list = {}
+  if m.energy_density then list[1] = m:energy() end
+  for _, f in ipairs(m.moving) do
+    for _, what in ipairs { "mean", "minimum", "maximum", "amplitude", "wavelength" } do list[#list + 1] = measure[what](f) end
+  end
+  return list
+end
+
+local function open_ledger(m, total)
+  if m.ledger then return end
+  if not m.recorded then rawset(m, "recorded", { every = false, columns = default_columns(m) }) end
+  choose_time_unit(total)
+  local head = { { "time", time_unit, false }, { "stage", "", true }, { "step", time_unit, false } }
+  for _, c in ipairs(m.recorded.columns) do head[#head + 1] = { c.name, measure.unit(c), false } end
+  local name = #M.runs == 0 and "ledger.csv" or "ledger.csv"
+  if M.ledger_model and M.ledger_model ~= m then
+    name = "tables/ledger-" .. (#M.runs + 1) .. ".csv"
+    core.sub_folder(M.folder, "tables")
+  end
+  M.ledger_model = M.ledger_model or m
+  rawset(m, "ledger", core.table(M.folder, name, head))
+  rawset(m, "ledger_head", head)
+  rawset(m, "rows", {})
+  M.runs[#M.runs + 1] = m
+end
+
+local function record(m, stage)
+  if m.last_record == m.time and m.last_stage == stage then return end
+  rawset(m, "last_record", m.time)
+  rawset(m, "last_stage", stage)
+  local row = { m.time / time_scale, stage, core.state(m.core).step / time_scale }
+  for i, c in ipairs(m.recorded.columns) do
+    local v = c.value()
+    row[i + 3] = (type(v) == "number" and v == v) and v or false
+  end
+  core.row(m.ledger, row)
+  m.rows[#m.rows + 1] = row
+end
+
+-- --- pictures and fields ------------------------------------------------------------------------------------------------------
+
+local function draw(m, p, stage)
+  if p.last == m.time then return end
+  p.last = m.time
+  local f, g = measure.values(p.e, "picture")
+  local name = string.format("pictures/%s-%04d.png", p.name:gsub("[^%w%-_]", "_"), p.n)
+  p.n = p.n + 1
+  local title = (stage ~= "" and stage .. ", " or "") .. (real() and "" or "time ") .. text.time(m.time, real())
+  core.picture(M.folder, name, f, { low = p.low, high = p.high, map = p.map, scale = p.scale, title = title, quantity = p.name,
+    spacing = g.dim > 1 and g.spacing[1] == g.spacing[2] and g.spacing[1] or 0, metres = real() })
+  m.drawn[#m.drawn + 1] = { file = name, title = title, name = p.name, time = m.time }
+end
+
+local function save(m, p)
+  if p.last == m.time then return end
+  p.last = m.time
+  local f = measure.values(p.e, "save")
+  core.write_array(M.folder, string.format("fields/%s-%04d.npy", p.name:gsub("[^%w%-_]", "_"), p.n), f)
+  p.n = p.n + 1
+end
+
+-- --- progress ------------------------------------------------------------------------------------------------------------------
+
+local shown = 0
+local function progress(m, state, run)
+  if M.quiet then return end
+  local now = core.clock()
+  local terminal = core.is_terminal(2)
+  if now - shown < (terminal and 0.2 or 10) then return end
+  shown = now
+  local done = (state.time - run.t0) / (run.t1 - run.t0)
+  local left = done > 0.005 and (now - run.began) * (1 - done) / done or nil
+  local stage = run.schedule and schedule.stage_at(run.schedule, state.time).name or ""
+  local line = string.format("%5.1f %%  time %s%s  step %s  energy %s%s", 100 * done, text.time(state.time, real()),
+    stage ~= "" and "  " .. stage or "", text.time(state.step, real()), text.number(state.energy),
+    left and string.format("  about %s left", core.time_text(left)) or "")
+  core.write(2, terminal and "\r\27[K" .. line or line .. "\n")
+end
+
+-- --- events ----------------------------------------------------------------------------------------------------------------------
+
+-- A thing that happens every dt: due(time) gives its next time after `time`.
+local function next_multiple(dt, t0, time)
+  local n = math.floor((time - t0) / dt * (1 + 1e-12) + 1e-9) + 1
+  return t0 + n * dt
+end
+
+local function is_multiple(dt, t0, time)
+  local n = math.floor((time - t0) / dt + 0.5)
+  return math.abs(t0 + n * dt - time) <= 1e-9 * dt
+end
+
+local function next_event(m, run, time)
+  local t = run.t1
+  local function sooner(x) if x > time and x < t then t = x end end
+  sooner(next_multiple(run.record_every, run.t0, time))
+  for _, list in ipairs { m.pictures, m.saves } do
+    for _, p in ipairs(list) do sooner(next_multiple(p.every or run.picture_every, run.t0, time)) end
+  end
+  for _, h in ipairs(m.every_hooks) do sooner(next_multiple(h.time, run.t0, time)) end
+  for _, h in ipairs(m.at_hooks) do if not h.done then sooner(h.time) end end
+  if run.schedule then
+    for _, s in ipairs(run.schedule.stages) do sooner(s.upto) end
+  end
+  return t
+end
+
+local function happen(m, run, stage, stage_ends)
+  local time, last = m.time, m.time >= run.t1
+  if stage_ends or last or is_multiple(run.record_every, run.t0, time) then record(m, stage) end
+  for _, p in ipairs(m.pictures) do
+    if last or stage_ends or is_multiple(p.every or run.picture_every, run.t0, time) then draw(m, p, stage) end
+  end
+  for _, p in ipairs(m.saves) do
+    if last or (p.every and is_multiple(p.every, run.t0, time)) then save(m, p) end
+  end
+  for _, h in ipairs(m.every_hooks) do if is_multiple(h.time, run.t0, time) then h.f(m) end end
+  for _, h in ipairs(m.at_hooks) do
+    if not h.done and h.time <= time then
+      h.done = true
+      h.f(m)
+    end
+  end
+end
+
+local function look(m)
+  for _, h in ipairs(m.when_hooks) do
+    if not h.done and h.time(m) then
+      h.done = true
+      h.f(m)
+    end
+  end
+end
+
+local function open_condition(m)
+  for _, h in ipairs(m.when_hooks) do if not h.done then return true end end
+  return false
+end
+
+local function stage_ending(run, time)
+  if not run.schedule then return "", false end
+  for _, s in ipairs(run.schedule.stages) do
+    if s.upto == time and s.upto > s.from then return s.name, true end
+  end
+  return schedule.stage_at(run.schedule, time).name, false
+end
+
+local function note_stage(m, run, stage)
+  local entry = run.stage_began
+  local state = core.state(m.core)
+  m.stages[#m.stages + 1] = { name = stage, from = entry.time, upto = m.time, T0 = entry.T, steps = state.steps - entry.steps,
+    T1 = run.schedule and core.param_value(run.schedule.param, m.time), first = #m.rows > 0 and entry.row or 1, last = #m.rows }
+  run.stage_began = { time = m.time, T = m.stages[#m.stages].T1, steps = state.steps, row = #m.rows }
+end
+
+local function advance(m, run)
+  while m.time < run.t1 do
+    local target = next_event(m, run, m.time)
+    local single = open_condition(m)
+    local tick = function(state) progress(m, state, run) end
+    repeat
+      local arrived = core.advance(m.core, target, tick, single)
+      look(m)
+      single = open_condition(m)
+    until arrived or m.time >= target
+    local stage, ends = stage_ending(run, m.time)
+    happen(m, run, stage, ends)
+    if ends or m.time >= run.t1 then note_stage(m, run, stage) end
+    report.refresh(M)
+  end
+end
+
+-- --- running ----------------------------------------------------------------------------------------------------------------------
+
+local function prepare(m, o)
+  local t0 = m.time
+  local run = { t0 = t0, schedule = o.schedule, began = core.clock() }
+  if o.schedule then
+    run.t1 = schedule.lay_out(o.schedule, t0)
+    scheduled[o.schedule.param] = true
+    if run.t1 <= t0 then core.fail("schedule: all stages together take no time; add a hold{...}") end
+  else
+    run.t1 = t0 + o.duration
+  end
+  local total = run.t1 - t0
+  run.record_every = m.recorded and m.recorded.every or total / 100
+  run.picture_every = total / 4
+  return run
+end
+
+local function stops_cleanly(m, f)
+  local ok, message = xpcall(f, function(e) return e end)
+  if ok then return end
+  local state = core.state(m.core)
+  M.stopped_at = state.time
+  core.close_table(m.ledger)
+  report.finish(M, tostring(message))
+  error(message, 0)
+end
+
+function M.run(m, o)
+  inputs.check()
+  local run = prepare(m, o)
+  if M.plan then M.plan(m, run, o) end -- does not come back
+  if not M.folder then M.open_folder() end
+  local fresh = not m.started
+  if fresh then
+    rawset(m, "drawn", {})
+    rawset(m, "stages", {})
+    core.start(m.core, { accuracy = o.accuracy, step = o.step, longest = o.longest, first_order = o.first_order and 1 or 0 }, run.t0)
+    rawset(m, "started", true)
+    clock_model = m
+    if #m.pictures == 0 and m.grid.dim > 1 then for _, f in ipairs(m.moving) do m:picture { f } end end
+    open_ledger(m, run.t1 - run.t0)
+  end
+  clock_model = m
+  M.current = m
+  run.stage_began = { time = run.t0, T = o.schedule and o.schedule.start, steps = core.state(m.core).steps, row = #m.rows + (fresh and 1 or 0) }
+  rawset(m, "schedule", o.schedule)
+  stops_cleanly(m, function()
+    local stage = o.schedule and schedule.stage_at(o.schedule, run.t0).name or ""
+    if fresh then
+      record(m, stage)
+      for _, p in ipairs(m.pictures) do draw(m, p, stage) end
+      for _, p in ipairs(m.saves) do if p.every then save(m, p) end end
+    end
+    advance(m, run)
+  end)
+  rawset(m, "wall", (m.wall or 0) + core.clock() - run.began)
+end
+models.runner = M.run
+
+---All scripts' runs are over: the ledger is closed, the summary written.
+function M.close(failure)
+  if not M.folder then return end
+  if not M.quiet and core.is_terminal(2) then core.write(2, "\r\27[K") end
+  for _, m in ipairs(M.runs) do
+    if m.ledger then core.close_table(m.ledger) end
+  end
+  report.finish(M, failure)
+end
+
+M.time_unit = function() return time_unit, time_scale end
+M.seeds = formula.seeds
+M.inputs = inputs
+
+return M
