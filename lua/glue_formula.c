@@ -180,6 +180,7 @@ static int free_expr(lua_State *L) {
 static int number(lua_State *L) {
     mt_error err = {0};
     double v;
+    lua_settop(L, 2);
     const mt_expr *e = glue_expr(L, 1, "a number");
     if (!mt_expr_uniform(e))
         lua_pushnil(L);

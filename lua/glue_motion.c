@@ -52,6 +52,7 @@ static int field_set(lua_State *L) {
     mt_error err = {0};
     mt_field *f = glue_field(L, 1);
     glue_grid *g = glue_grid_at(L, 2);
+    lua_settop(L, 5);
     const mt_expr *e = glue_expr(L, 3, "start");
     int n;
     mt_field **fields = fields_at(L, 4, &n);
@@ -84,6 +85,7 @@ static int evaluate(lua_State *L) {
     mt_error err = {0};
     mt_field *into = glue_field(L, 1);
     glue_grid *g = glue_grid_at(L, 2);
+    lua_settop(L, 5);
     const mt_expr *e = glue_expr(L, 3, "evaluate");
     int n;
     mt_field **fields = fields_at(L, 4, &n);

@@ -13,7 +13,7 @@
 #include "core/base/random.h"
 #include "core/space/spectrum.h"
 
-#define MT_LOG_CUT 1e-9
+#define MT_LOG_CUT 1e-6
 
 /* Deeper expressions are refused (EINPUT), so that walks may recurse. */
 #define MT_MOST_DEPTH 2000

@@ -161,9 +161,24 @@ static mt_status commuting(const mt_expr **out, mt_op op, const mt_expr *const a
  * -------------------------------------------------------------------------------------------------------------------
  */
 
+/* constant + e: where e is constant + y, constant - y or y - constant, the constants become one. false:
+ * nothing to do */
+static bool join_constants(const mt_expr **out, double c, const mt_expr *e, mt_status *st, mt_error *err) {
+    const mt_expr *k;
+    if (e->op != MT_ADD_OP && e->op != MT_SUB_OP) return false;
+    bool first = e->arg[0]->op == MT_CONST_OP, second = e->arg[1]->op == MT_CONST_OP;
+    if (!first && !second) return false;
+    double inner = e->arg[!first]->value, sum = c + (second && e->op == MT_SUB_OP ? -inner : inner);
+    if (!isfinite(sum)) return false;
+    *st = number(&k, e, sum, err);
+    *st = after(out, first ? e->op : MT_ADD_OP, *st, k, e->arg[first], 0, err);
+    return true;
+}
+
 static mt_status make_sum(const mt_expr **out, mt_op op, const mt_expr *const a[], mt_error *err) {
     bool minus = op == MT_SUB_OP;
     double ca, cb;
+    mt_status joined;
     if (is(a[1], 0)) return give(out, a[0]);
     if (is(a[0], 0)) return minus ? mt_expr_unary(out, MT_NEG_OP, a[1], err) : give(out, a[1]);
     const mt_expr *ba = base_of(a[0], &ca), *bb = base_of(a[1], &cb);
@@ -171,6 +186,11 @@ static mt_status make_sum(const mt_expr **out, mt_op op, const mt_expr *const a[
         double c = minus ? ca - cb : ca + cb;
         if (isfinite(c)) return c == 0 ? number(out, ba, 0, err) : scaled(out, c, ba, err);
     }
+    if (a[1]->op == MT_CONST_OP &&
+        join_constants(out, minus ? -a[1]->value : a[1]->value, a[0], &joined, err))
+        return joined;
+    if (a[0]->op == MT_CONST_OP && !minus && join_constants(out, a[0]->value, a[1], &joined, err))
+        return joined;
     if (a[1]->op == MT_NEG_OP)
         return mt_expr_binary(out, minus ? MT_ADD_OP : MT_SUB_OP, a[0], a[1]->arg[0], err);
     if (bb != a[1] && cb < 0) { /* a + (-3) b = a - 3 b */
@@ -216,8 +236,18 @@ static mt_status make_product(const mt_expr **out, mt_op op, const mt_expr *cons
     for (int i = 0; i < 2; i++) { /* numbers to the front */
         const mt_expr *x = a[i], *y = a[1 - i];
         if (y->op != MT_MUL_OP || y->arg[0]->op != MT_CONST_OP) continue;
+        if (mt_expr_uniform(y) && !mt_expr_uniform(x)) continue;
         mt_status st = mt_expr_binary(&p, MT_MUL_OP, x, x->op == MT_CONST_OP ? y->arg[0] : y->arg[1], err);
         return after(out, MT_MUL_OP, st, p, x->op == MT_CONST_OP ? y->arg[1] : y->arg[0], 0, err);
+    }
+    for (int i = 0; i < 2; i++) { /* what is the same in every cell stays together: kernels compute it once */
+        const mt_expr *x = a[i], *y = a[1 - i];
+        if (y->op != MT_MUL_OP || mt_expr_uniform(y)) continue;
+        int u = mt_expr_uniform(y->arg[0]) ? 0 : mt_expr_uniform(y->arg[1]) ? 1 : -1;
+        if (u < 0 || (y->arg[u]->op == MT_CONST_OP && !mt_expr_uniform(x))) continue;
+        bool together = mt_expr_uniform(x);
+        mt_status st = mt_expr_binary(&p, MT_MUL_OP, x, together ? y->arg[u] : y->arg[1 - u], err);
+        return after(out, MT_MUL_OP, st, p, together ? y->arg[1 - u] : y->arg[u], 0, err);
     }
     const mt_expr *ba = power_of(a[0], &pa), *bb = power_of(a[1], &pb);
     if (ba == bb && ba->op != MT_CONST_OP && pa + pb <= 64) {

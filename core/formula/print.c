@@ -138,8 +138,8 @@ static void flatten_product(items *l, const mt_expr *e) {
  */
 
 static bool negative_number_in_front(const mt_expr *e) {
-    if (e->op == MT_CONST_OP) return e->value < 0;
-    return e->op == MT_MUL_OP && e->arg[0]->op == MT_CONST_OP && e->arg[0]->value < 0;
+    while (e->op == MT_MUL_OP) e = e->arg[0];
+    return e->op == MT_CONST_OP && e->value < 0;
 }
 
 /* |e| of a term that shows its sign in front */

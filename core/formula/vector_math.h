@@ -72,7 +72,7 @@ MT_INLINE double mt_log_positive(double x) {
 
 /* The extension of expr.h below the cut. */
 MT_INLINE double mt_log_one(double x) {
-    const double c = MT_LOG_CUT, log_c = -20.72326583694641115616; /* log 1e-9 */
+    const double c = MT_LOG_CUT, log_c = -13.815510557964274; /* log 1e-6 */
     double t = (x - c) / c, in = mt_log_positive(x < c ? c : x);
     return x < c ? log_c + t - 0.5 * t * t : in;
 }

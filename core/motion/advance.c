@@ -320,7 +320,7 @@ static mt_status step(mt_model *m, double stop, double until, mt_error *err) {
         plan_step(m, stop, &a);
         a.capture = a.time_next == until;
         double shortest = fmax(m->options.shortest, 4e-16 * fabs(m->state.time));
-        if (a.dt <= shortest && a.time_next != stop) return too_small(m, why.status, err);
+        if (a.dt <= shortest && a.time_next != stop) break;
         mt_status st = mt_step_attempt(m, &a, err);
         if (st) return st;
         why.status = MT_OK;

@@ -26,6 +26,10 @@
  * rest, or where a ramp sets in, the change is of the order of its own error. */
 #define REST 1e-4
 
+/* Nor is anything seen below this fraction of the mean: a homogenised alloy has no fluctuations but rounding.
+ */
+#define ROUNDING 1e-14
+
 typedef struct scheme {
     double dt, a0, a1, a2; /* a0 u+ + a1 u + a2 u- */
     double b0, b1;         /* weights of E, E- */
@@ -309,7 +313,8 @@ static double error_ratio(const mt_model *m, double accuracy) {
     for (int i = 0; i < m->n; i++) {
         const double *t = m->totals + 3 * i;
         if (m->mover[i].motion == MT_MOTION_STILL) continue;
-        double allowed = accuracy * (sqrt(t[1]) + REST * sqrt(t[2])) + 1e-300;
+        double allowed =
+            accuracy * (sqrt(t[1]) + REST * sqrt(t[2])) + ROUNDING * fabs(m->mover[i].u[0]) + 1e-300;
         double ratio = sqrt(t[0]) / allowed;
         if (!(ratio <= worst)) worst = isnan(ratio) ? INFINITY : ratio;
     }
@@ -348,6 +353,7 @@ mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err) {
         m->next[i] = m->mover[i].motion == MT_MOTION_STILL ? m->mover[i].u : m->mover[i].um;
     if (!st) st = sweep_columns(m, &x, a->time_next, err);
     if (st) return st;
+    for (int i = 0; i < m->n; i++) mt_spectrum_symmetrise(m->program.spectrum, m->next[i]);
     a->ratio = error_ratio(m, m->options.accuracy);
     if (m->options.fixed <= 0 && a->ratio > 1) return MT_OK;
     a->swept = true;

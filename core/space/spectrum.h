@@ -44,4 +44,9 @@ typedef struct mt_spectrum {
 /* Inner mode numbers of column j: modes[a] is set for every axis but the outer, 0 there. */
 MT_API void mt_spectrum_column(const mt_spectrum *s, size_t j, int modes[3]);
 
+/* Makes a spectrum that of a real array exactly: values at k and -k that are both stored (mode 0 of the half
+ * axis) become complex conjugates. Rounding breaks that symmetry by a little; a broken part is invisible in
+ * real space, so a linear growth rate would make it grow without anything to stop it. */
+MT_API void mt_spectrum_symmetrise(const mt_spectrum *s, double *spectrum);
+
 #endif
