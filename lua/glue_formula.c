@@ -222,8 +222,10 @@ static int dim(lua_State *L) {
     mt_grid *grid = NULL;
     const mt_expr *e = glue_expr(L, 1, "a formula");
     glue_check(L, mt_expr_grid(e, &grid, &err), &err);
-    if (grid) lua_pushinteger(L, grid->dim);
-    else lua_pushnil(L);
+    if (grid)
+        lua_pushinteger(L, grid->dim);
+    else
+        lua_pushnil(L);
     return 1;
 }
 
@@ -324,7 +326,8 @@ void glue_open_formula(lua_State *L) {
         {"number", number},
         {"is_expr", is_expr},
         {"kind", kind},
-        {"contains", contains}, {"dim", dim},
+        {"contains", contains},
+        {"dim", dim},
         {"partial", partial},
         {"replace", replace},
         {"param", new_param},

@@ -66,15 +66,16 @@ static int add_discs(lua_State *L) {
     mt_field *f = glue_field(L, 1);
     size_t n;
     double *centres = glue_numbers(L, 2, &n);
-    mt_field_add_discs(f, (int)(n / (size_t)f->grid->dim), centres, luaL_checknumber(L, 3), luaL_checknumber(L, 4),
-                       luaL_checknumber(L, 5));
+    mt_field_add_discs(f, (int)(n / (size_t)f->grid->dim), centres, luaL_checknumber(L, 3),
+                       luaL_checknumber(L, 4), luaL_checknumber(L, 5));
     return 0;
 }
 
 /* random(seed, stream) -> a number in [0, 1) that depends on nothing else */
 static int random_one(lua_State *L) {
     double v;
-    mt_random_fill(MT_RANDOM_UNIFORM, (uint64_t)luaL_checkinteger(L, 1), (uint64_t)luaL_checkinteger(L, 2), 1, 0, 1, &v);
+    mt_random_fill(MT_RANDOM_UNIFORM, (uint64_t)luaL_checkinteger(L, 1), (uint64_t)luaL_checkinteger(L, 2), 1,
+                   0, 1, &v);
     lua_pushnumber(L, 0.5 * (v + 1));
     return 1;
 }
@@ -293,12 +294,11 @@ static int advance(lua_State *L) {
 
 void glue_open_motion(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"field", new_field},   {"field_name", field_name}, {"field_set", field_set},
-        {"evaluate", evaluate}, {"model", new_model},       {"energy", energy},
-        {"conserve", conserve}, {"relax", relax},           {"evolve", evolve},
-        {"still", still},       {"potential", potential},   {"describe", describe},
-        {"bytes", bytes},       {"growth", growth},         {"start", start},
-        {"state", state},       {"advance", advance}, {"add_discs", add_discs}, {"random", random_one}, {NULL, NULL},
+        {"field", new_field}, {"field_name", field_name}, {"field_set", field_set}, {"evaluate", evaluate},
+        {"model", new_model}, {"energy", energy},         {"conserve", conserve},   {"relax", relax},
+        {"evolve", evolve},   {"still", still},           {"potential", potential}, {"describe", describe},
+        {"bytes", bytes},     {"growth", growth},         {"start", start},         {"state", state},
+        {"advance", advance}, {"add_discs", add_discs},   {"random", random_one},   {NULL, NULL},
     };
     static const luaL_Reg field_meta[] = {{"__gc", free_field}, {"__close", free_field}, {NULL, NULL}};
     static const luaL_Reg model_meta[] = {{"__gc", free_model}, {"__close", free_model}, {NULL, NULL}};

@@ -3,7 +3,8 @@
 #include <math.h>
 #include <stdio.h>
 
-void check_close_at(double a, double b, double rtol, double atol, const char *what, const char *file, int line) {
+void check_close_at(double a, double b, double rtol, double atol, const char *what, const char *file,
+                    int line) {
     if (isnan(a) && isnan(b)) return;
     if (a == b || fabs(a - b) <= atol + rtol * fabs(b)) return;
     print_error("%s = %.17g, expected %.17g (off by %.3g, allowed %.3g)\n", what, a, b, fabs(a - b),
@@ -31,7 +32,8 @@ void check_allocation_sweep(mt_status (*body)(void *ctx, mt_error *err), void *c
             check_ok(status, &err);
             return;
         }
-        if (status != MT_ENOMEM && status != MT_OK) fail_msg("allocation %ld failing gives '%s'", k, mt_status_text(status));
+        if (status != MT_ENOMEM && status != MT_OK)
+            fail_msg("allocation %ld failing gives '%s'", k, mt_status_text(status));
     }
     fail_msg("the sweep does not end");
 }

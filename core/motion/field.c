@@ -155,7 +155,9 @@ mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, i
     return MT_OK;
 }
 
-/* --- discs --------------------------------------------------------------------------------------------------------------- */
+/* --- discs
+ * ---------------------------------------------------------------------------------------------------------------
+ */
 
 /* Squared distance along one axis from cell i to a coordinate. */
 static double apart(const mt_grid *g, int axis, int i, double x) {
@@ -170,7 +172,8 @@ static void add_disc(mt_field *f, const double *centre, double radius, double wi
     size_t cell = 0;
     for (int z = 0; z < g->n[2]; z++)
         for (int y = 0; y < g->n[1]; y++) {
-            double rest = (g->dim > 1 ? apart(g, 1, y, centre[1]) : 0) + (g->dim > 2 ? apart(g, 2, z, centre[2]) : 0);
+            double rest =
+                (g->dim > 1 ? apart(g, 1, y, centre[1]) : 0) + (g->dim > 2 ? apart(g, 2, z, centre[2]) : 0);
             for (int x = 0; x < g->n[0]; x++, cell++) {
                 double r = sqrt(rest + apart(g, 0, x, centre[0]));
                 if (r < reach) f->values[cell] += 0.5 * amount * (1 - tanh((r - radius) / width));
@@ -178,7 +181,8 @@ static void add_disc(mt_field *f, const double *centre, double radius, double wi
         }
 }
 
-void mt_field_add_discs(mt_field *field, int count, const double *centres, double radius, double width, double amount) {
+void mt_field_add_discs(mt_field *field, int count, const double *centres, double radius, double width,
+                        double amount) {
     for (int i = 0; i < count; i++) add_disc(field, centres + i * field->grid->dim, radius, width, amount);
     mt_field_touch(field);
 }

@@ -33,8 +33,9 @@ MT_API mt_status mt_evaluate(mt_sweeper *sweeper, const mt_expr *e, int n, mt_fi
 MT_API mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, int n,
                               mt_field *const fields[], double time, mt_error *err) MT_MUST_USE;
 
-/* Adds smooth-edged discs (spheres, bars) to the values: amount / 2 (1 - tanh((r - radius) / width)) about each centre,
- * r the distance to its nearest image across periodic walls. centres: count * dim coordinates. Then mt_field_touch. */
+/* Adds smooth-edged discs (spheres, bars) to the values: amount / 2 (1 - tanh((r - radius) / width)) about
+ * each centre, r the distance to its nearest image across periodic walls. centres: count * dim coordinates.
+ * Then mt_field_touch. */
 MT_API void mt_field_add_discs(mt_field *field, int count, const double *centres, double radius, double width,
                                double amount);
 
