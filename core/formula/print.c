@@ -62,7 +62,8 @@ static void print_at(out *o, const mt_expr *e, int least) {
  * last. */
 static double degree(const mt_expr *e) {
     switch (e->op) {
-    case MT_FIELD_OP: return 1;
+    case MT_FIELD_OP:
+        return 1 + 1e-6 * e->symbol->number; /* fields of one power in the order they were made */
     case MT_MUL_OP: return degree(e->arg[0]) + degree(e->arg[1]);
     case MT_DIV_OP: return degree(e->arg[0]);
     case MT_NEG_OP: return degree(e->arg[0]);
