@@ -31,14 +31,15 @@ static void make_conjugates(double *a, double *b) {
 
 void mt_spectrum_symmetrise(const mt_spectrum *s, double *u) {
     int mode[3], other[3];
-    if (s->half < 0 || s->half == s->outer) return;
+    if (s->half < 0) return;
+    int length = s->half == s->outer ? 1 : s->length; /* of the half axis only mode 0 is its own opposite */
     for (size_t j = 0; j < s->columns; j++) {
         mt_spectrum_column(s, j, mode);
         if (mode[s->half] != 0) continue;
         for (int a = 0; a < 3; a++) other[a] = opposite(s, a, mode[a]);
         size_t partner = column_of(s, other);
         if (partner < j) continue;
-        for (int m = 0; m < s->length; m++) {
+        for (int m = 0; m < length; m++) {
             int q = opposite(s, s->outer, m);
             if (partner == j && q < m) continue;
             make_conjugates(u + j * s->stride + 2 * (size_t)m, u + partner * s->stride + 2 * (size_t)q);

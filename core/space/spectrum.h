@@ -14,8 +14,8 @@
  * double j * stride. Between the two sweeps data are *mixed*: transformed along the inner axes only, in "work
  * arrays" whose inside nobody but the sweeps looks at.
  *
- * If any axis is periodic, spectral values are complex; one periodic axis, the first that is transformed (x
- * before y before z), is kept half: modes 0 .. n/2. If all axes are mirror, values are real. */
+ * If any axis of more than one cell is periodic, spectral values are complex; one such axis, the first that
+ * is transformed (x before y before z), is kept half: modes 0 .. n/2. Otherwise values are real. */
 #ifndef MT_SPACE_SPECTRUM_H
 #define MT_SPACE_SPECTRUM_H
 
@@ -35,10 +35,10 @@ typedef struct mt_spectrum {
     size_t stride;       /* doubles from column to column, a multiple of 8 */
     size_t doubles;      /* doubles of a spectral array */
     double *k[3];        /* k[axis][m], m < modes[axis]: wavenumber (rad per length) */
-    double *weight[3];   /* weight[axis][m] of an even array: mean(u^2) = sum of |u^_m|^2 times the product of
-                            weights:   half axis 1 at m = 0 and 2 above; other periodic axes 1; mirror 1 at m =
-                            0   and 1/2 above.   (For an array that is odd along an axis, its mode 0 is stored
-                            as   0,   so weights hold too.) */
+    /* weight[axis][m]: mean(u^2) = sum of |u^_m|^2 times the product of weights: half axis 1 at m = 0 and 2
+     * above; other periodic axes 1; mirror 1 at m = 0 and 1/2 above. Odd arrays have 0 at mode 0, so the
+     * weights hold for them too. */
+    double *weight[3];
 } mt_spectrum;
 
 /* Inner mode numbers of column j: modes[a] is set for every axis but the outer, 0 there. */

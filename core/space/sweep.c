@@ -1,7 +1,8 @@
-/* Measured against two bare whole-array FFTW transforms: see scripts/bench. What pays: the row transform goes
- * straight between work array and unit buffer, no copy; columns are copied MT_BLOCK at a time to contiguous
- * lines (128 bytes a row, two cache lines), with the scale 1/n folded into the copy; work rows are padded so
- * that no stride is a power of two. */
+/* What pays: the row transform goes straight between work array and unit buffer, no copy; columns are copied
+ * MT_BLOCK at a time to contiguous lines (128 bytes a row, two cache lines), with the scale 1/n folded into
+ * the copy, and transformed out of place; work rows are padded to an odd number of cache lines. Row sweep
+ * plus column sweep with a body that only copies, 1 thread, against the two bare whole-array transforms
+ * planned with FFTW_MEASURE: 1024^2 about the same, 128^3 about the same. */
 #include "core/space/sweep.h"
 
 #include <string.h>
@@ -50,9 +51,7 @@ size_t mt_sweeper_unit_cells(const mt_sweeper *s) {
     return (size_t)s->rows_per_unit * s->inner_cells;
 }
 
-/* --- making
- * --------------------------------------------------------------------------------------------------------------
- */
+/* --- making --- */
 
 static int find_outer(const mt_grid *g) {
     for (int a = g->dim - 1; a > 0; a--)
@@ -184,8 +183,7 @@ static mt_status reserve(mt_sweeper *w, size_t doubles, mt_error *err) {
     return MT_OK;
 }
 
-/* --- lines of a block
- * ------------------------------------------------------------------------------------------------------ */
+/* --- lines of a block --- */
 
 /* count lines of n elements (re or re, im): element i of line l at from[i * step + l * width] <-> buf[l *
  * room + i * width] */
@@ -252,8 +250,7 @@ static void scatter(const block *b, const double *buf, double *to) {
         scatter_rows(b, b->count, buf, to);
 }
 
-/* --- slabs: the inner axes at one place of the outer one
- * -------------------------------------------------------------------- */
+/* --- slabs: the inner axes at one place of the outer one --- */
 
 static bool is_odd(mt_parities p, int axis) {
     return (p >> axis) & 1;
@@ -313,9 +310,7 @@ static size_t slab_scratch(const mt_sweeper *w) {
     return w->plane_ld ? w->plane_ld * (size_t)w->grid->n[1] + 2 * MT_BLOCK * mt_line_room(&w->axis[1]) : 0;
 }
 
-/* --- the row sweep
- * ------------------------------------------------------------------------------------------------------------
- */
+/* --- the row sweep --- */
 
 typedef struct sweep {
     mt_sweeper *w;
@@ -403,9 +398,7 @@ mt_status mt_sweep_rows(mt_sweeper *w, int nin, double *const in[], const mt_par
     return st ? st : mt_pool_run(w->pool, w->units, row_job, &x, err);
 }
 
-/* --- the column sweep
- * ---------------------------------------------------------------------------------------------------------
- */
+/* --- the column sweep --- */
 
 /* Projected out along an inner axis: a Nyquist mode, or mode 0 of an odd array. */
 static bool inner_dropped(const mt_sweeper *w, mt_parities p, const int mode[3]) {
@@ -493,9 +486,7 @@ mt_status mt_sweep_columns(mt_sweeper *w, int nin, double *const in[], const mt_
     return st ? st : mt_pool_run(w->pool, w->blocks, column_job, &x, err);
 }
 
-/* --- whole arrays
- * ---------------------------------------------------------------------------------------------------------------
- */
+/* --- whole arrays --- */
 
 typedef struct whole {
     const mt_spectrum *s;

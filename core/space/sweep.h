@@ -2,13 +2,17 @@
  * work array once, line by line while the data are in cache:
  *
  *   row sweep:     for each unit of rows: inverse transform along the inner axes, body in real space, forward
- * transform; column sweep:  for each column: forward transform along the outer axis, body on the modes,
- * inverse transform.
+ *                  transform;
+ *   column sweep:  for each column: forward transform along the outer axis, body on the modes, inverse
+ *                  transform.
  *
- * Work arrays hold data that are transformed along the inner axes only. A sweep may read and write the same
- * work array (input i and output j may be one array); outputs are written after all inputs of the unit were
- * read. Everything is done unit by unit with one plan per line, so results do not depend on the number of
- * threads. FFTW is planned with FFTW_ESTIMATE: the same plans, and so the same bits, in every process. */
+ * Work arrays hold data that are transformed along the inner axes only. What a row sweep wrote is read by a
+ * column sweep and the other way round: the column sweep brings in the factor 1/n of all periodic axes. Input
+ * i and output j may be one array; outputs are written after all inputs of the unit were read. A row sweep
+ * spends its inputs (what they held is lost, and no array may be given twice as input), a column sweep leaves
+ * them as they were. Everything is done unit by unit with one plan per line, so results do not depend on the
+ * number of threads. FFTW is planned with FFTW_ESTIMATE: the same plans, and so the same bits, in every
+ * process. A sweeper runs one sweep at a time. */
 #ifndef MT_SPACE_SWEEP_H
 #define MT_SPACE_SWEEP_H
 
@@ -58,7 +62,7 @@ MT_API size_t mt_sweeper_unit_cells(const mt_sweeper *s);   /* cells of the larg
 MT_API size_t mt_sweeper_work_doubles(const mt_sweeper *s); /* doubles of a work array */
 
 /* in/out: nin/nout work arrays with the parity of each; either may be none (0). Fails as the lowest failing
- * unit does, or with ENOMEM when buffers must grow. */
+ * unit does, with ENOMEM when buffers must grow, or with EUNSUPPORTED for more than 256 arrays in or out. */
 MT_API mt_status mt_sweep_rows(mt_sweeper *s, int nin, double *const in[], const mt_parities in_parity[],
                                int nout, double *const out[], const mt_parities out_parity[],
                                mt_row_body body, void *ctx, mt_error *err) MT_MUST_USE;
