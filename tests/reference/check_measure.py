@@ -1,0 +1,114 @@
+"""Measurements against SciPy and scikit-image on random images: labels (scipy.ndimage.label, joined across periodic walls by
+hand), level lines (skimage.measure.find_contours, marching squares of its own), the structure factor (numpy.fft)."""
+import os
+import subprocess
+import sys
+import tempfile
+
+import numpy as np
+import scipy.fft
+import scipy.ndimage
+import skimage.measure
+
+probe = os.path.join(os.environ["BUILD"], "probe_measure")
+
+
+def run(a, walls, level):
+    with tempfile.NamedTemporaryFile(suffix=".raw") as f:
+        a.astype("<f8").tofile(f.name)
+        shape = list(a.shape[::-1]) + [1] * (3 - a.ndim)
+        out = subprocess.run([probe, f.name, *map(str, shape), walls, repr(level)], check=True, capture_output=True, text=True).stdout
+    values, shells = {}, []
+    for line in out.splitlines():
+        words = line.split()
+        if words[0] == "shell":
+            shells.append([float(w) for w in words[1:]])
+        else:
+            values[words[0]] = float(words[1])
+    return values, np.array(shells)
+
+
+def close(name, got, wanted, rtol, atol=0.0):
+    if abs(got - wanted) > rtol * abs(wanted) + atol:
+        sys.exit(f"{name}: {got!r}, expected {wanted!r}")
+
+
+def labels(mask, walls, full):
+    structure = scipy.ndimage.generate_binary_structure(mask.ndim, mask.ndim if full else 1)
+    pad = [(1, 1) if w == "p" else (0, 0) for w in walls[:mask.ndim][::-1]]
+    inner = tuple(slice(p[0], s + p[0]) for p, s in zip(pad, mask.shape))
+    wrapped, n = scipy.ndimage.label(np.pad(mask, pad, mode="wrap"), structure)
+    parent = list(range(n + 1))
+
+    def root(i):
+        while parent[i] != i:
+            i = parent[i]
+        return i
+
+    ids = np.pad(np.arange(mask.size).reshape(mask.shape), pad, mode="wrap")
+    first = {}
+    for cell, label in zip(ids.ravel(), wrapped.ravel()):  # copies of a cell belong to one domain
+        if label:
+            if cell in first:
+                parent[root(label)] = root(first[cell])
+            else:
+                first[cell] = label
+    found = np.array([root(x) for x in wrapped[inner].ravel() if x])
+    return len(set(found)), max(np.bincount(found)) if len(found) else 0
+
+
+def smooth(shape, sigma, seed, mode):
+    return scipy.ndimage.gaussian_filter(np.random.default_rng(seed).normal(size=shape), sigma, mode=mode)
+
+
+for seed in range(12):
+    for walls in ("ppp", "mmm", "pmp", "mpm"):
+        for shape in ((24, 31), (9, 10, 11)):
+            a = smooth(shape, 0.7, seed, "wrap")
+            v, shells = run(a, walls, 0.03)
+            for full in (False, True):
+                n, largest = labels(a > 0.03, walls, full)
+                name = "full" if full else "faces"
+                close(name, v[name], n, 0)
+                close(name + " largest", v[name + "_largest"], largest, 0)
+            close("mean", v["mean"], a.mean(), 0, 1e-15)
+            close("variance", v["variance"], a.var(), 1e-13)
+
+# Level lines: the inner part of a smooth image, where no wall matters.
+for seed in range(6):
+    a = smooth((64, 64), 4, seed, "nearest")
+    a[:3] = a[-3:] = -1
+    a[:, :3] = a[:, -3:] = -1
+    v, _ = run(a, "mmm", 0.011)
+    length = sum(np.sqrt((np.diff(c, axis=0) ** 2).sum(1)).sum() for c in skimage.measure.find_contours(a, 0.011))
+    close("contour", v["interface"], length, 1e-10)
+
+# Level surface: skimage's Lewiner cubes and our tetrahedra are different surfaces of the same order of accuracy.
+a = smooth((40, 40, 40), 4, 3, "nearest")
+a[:2] = a[-2:] = a[:, :2] = a[:, -2:] = a[:, :, :2] = a[:, :, -2:] = -1
+v, _ = run(a, "mmm", 0.0)
+vertices, faces, _, _ = skimage.measure.marching_cubes(a, 0.0)
+close("surface", v["interface"], skimage.measure.mesh_surface_area(vertices, faces), 0.02)
+
+# Structure factor of a periodic image from its definition.
+a = smooth((36, 48), 1.5, 5, "wrap")
+v, shells = run(a, "ppp", 0.0)
+s = np.abs(np.fft.fft2(a - a.mean())) ** 2 / a.size
+k = 2 * np.pi * np.hypot(*np.meshgrid(np.fft.fftfreq(36), np.fft.fftfreq(48), indexing="ij"))
+s[18, :] = s[:, 24] = 0
+kept = np.ones_like(s, bool)
+kept[18, :] = kept[:, 24] = kept[0, 0] = False
+close("sum rule", v["sum_rule"], s.sum() / a.size, 1e-12)
+shell = np.floor(k / (2 * np.pi / 48) + 0.5).astype(int)
+for i, (mean_k, mean_s, modes) in enumerate(shells, start=1):
+    m = kept & (shell == i)
+    close("modes", modes, m.sum(), 0)
+    close("shell S", mean_s, s[m].mean(), 1e-11)
+    close("shell k", mean_k, k[m].mean(), 1e-12)
+close("wavelength", v["wavelength"], 2 * np.pi * shells[:, 1].sum() / (shells[:, 0] * shells[:, 1]).sum(), 1e-12)
+
+# Mirror walls: the same sum rule through the cosine transform.
+v, _ = run(a, "mmm", 0.0)
+c = scipy.fft.dctn(a - a.mean(), norm="ortho")
+close("mirror sum rule", v["sum_rule"], (c ** 2).sum() / a.size, 1e-12)
+print("measurements agree")
