@@ -127,7 +127,7 @@ function Solution:binodal(T)
     low = slope(tiny, T, L) >= least and tiny or bisect(function(z) return slope(z, T, L) - least end, tiny, a)
   end
   -- bisection in log x, since dilute phases may be very dilute
-  local lx = bisect(function(u) return gap(math.exp(u)) end, math.log(math.max(low, 1e-290)), math.log(a))
+  local lx = bisect(function(u) return gap(math.exp(u)) end, math.log(math.max(low * (1 + 1e-9), 1e-290)), math.log(a))
   local x = math.exp(lx)
   return x, match(x)
 end
