@@ -33,4 +33,4 @@ with ThreadPoolExecutor(os.cpu_count()) as pool:
     slopes = list(pool.map(exponent, (1, 2, 3, 4)))
 mean, half = np.mean(slopes), student.ppf(0.975, 3) * np.std(slopes, ddof=1) / 2
 print(f"mean exponent {mean:.4f} +- {half:.4f} (95 %, four seeds), expected -0.3333 +- 0.04")
-sys.exit(abs(mean + 1 / 3) > 0.04)
+sys.exit(int(abs(mean + 1 / 3) > 0.04))
