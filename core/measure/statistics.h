@@ -36,9 +36,9 @@ typedef struct mt_peaks {
  * amplitude and level go on through the growth of a wave; `two` says which rule gave them. A constant field
  * has amplitude 0. Values not finite: NaN, and `two` false.
  *
- * Limits: a sine wave reads 2 % low (the smoothing rounds its edges); a phase of fewer than some 40 cells
- * makes no peak. Rules and numbers are our own; that peaks rather than extremes are read is common practice.
- * References from memory. ENOMEM (6 kB). */
+ * Limits: a sine wave reads 2 % low (the smoothing rounds its edges); a phase of fewer than 26 cells, or more
+ * where they spread, makes no peak. Rules and numbers are our own; that peaks rather than extremes are read
+ * is common practice. References from memory. ENOMEM (6 kB). */
 MT_API mt_status mt_peaks_of(const mt_grid *grid, const double *a, mt_peaks *out, mt_error *err) MT_MUST_USE;
 
 /* Fraction of the cells with a > level (above), or of the others. By the principle of Delesse (1847) and
