@@ -86,6 +86,7 @@ function M.make(folder, model)
   for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "domains", "domain_count",
     "interface", "wavelength", "structure_factor", "now" } do env[name] = measure[name] end
   for _, name in ipairs { "schedule", "quench", "ramp", "hold" } do env[name] = schedule[name] end
+  env.clock = core.clock -- wall time in seconds, for timing; not for decisions that a run should repeat
   env.unit, env.degC, env.input, env.model = units.unit, units.degC, inputs.input, model
 
   local function load_file(name)
