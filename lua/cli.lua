@@ -57,7 +57,8 @@ local function split_path(path)
 end
 
 local function use_threads(o)
-  local n = o.threads and tonumber(o.threads) or core.machine().cores
+  local n = core.machine().cores
+  if o.threads then n = tonumber(o.threads) end
   if not n or n ~= math.floor(n) or n < 1 or n > 256 then return nil, "--threads takes a whole number from 1 to 256, not '" .. o.threads .. "'" end
   run.threads = math.tointeger(n)
   core.threads(run.threads)
@@ -108,6 +109,7 @@ local function run_command(args)
   local chunk = load_script(rest[1])
   run.began = core.clock()
   local good, message = xpcall(chunk, function(e) return e end)
+  core.stop_heeded() -- from here on nothing is interrupted: ledger and report are closed properly
   if not good then
     run.close(tidy(message))
     core.write(2, "mottle: " .. tidy(message) .. "\n")

@@ -93,6 +93,12 @@ static int stopped(lua_State *L) {
     return 1;
 }
 
+static int stop_heeded(lua_State *L) {
+    (void)L;
+    glue_stop = 0;
+    return 0;
+}
+
 static int raise_stopped(lua_State *L) {
     return glue_fail(L, MT_ESTOPPED, "stopped on request");
 }
@@ -184,10 +190,21 @@ static int load_text(lua_State *L) {
 
 void glue_open_base(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"fail", fail},           {"where", where},   {"stopped", stopped}, {"raise_stopped", raise_stopped},
-        {"clock", clock_now},     {"date", date_now}, {"write", write_to},  {"is_terminal", is_terminal},
-        {"threads", set_threads}, {"memory", memory}, {"machine", machine}, {"exit_code", last_status},
-        {"load_text", load_text}, {NULL, NULL},
+        {"fail", fail},
+        {"where", where},
+        {"stopped", stopped},
+        {"stop_heeded", stop_heeded},
+        {"raise_stopped", raise_stopped},
+        {"clock", clock_now},
+        {"date", date_now},
+        {"write", write_to},
+        {"is_terminal", is_terminal},
+        {"threads", set_threads},
+        {"memory", memory},
+        {"machine", machine},
+        {"exit_code", last_status},
+        {"load_text", load_text},
+        {NULL, NULL},
     };
     luaL_setfuncs(L, functions, 0);
 }

@@ -231,8 +231,7 @@ local function stops_cleanly(m, f)
   if ok then return end
   local state = core.state(m.core)
   M.stopped_at = state.time
-  core.close_table(m.ledger)
-  report.finish(M, tostring(message))
+  if not core.stopped() then report.finish(M, tostring(message)) end -- on a stop, the command line does it
   error(message, 0)
 end
 

@@ -3,29 +3,30 @@ local core = require "core"
 
 local M = {}
 
----Edits (Levenshtein 1966) between two words.
+---Edits between two words; two letters swapped count as one (Damerau 1964, in its simple form).
 ---@param a string
 ---@param b string
 ---@return integer
 local function edits(a, b)
-  local row = {}
-  for j = 0, #b do row[j] = j end
+  local before, last, row = {}, {}, {}
+  for j = 0, #b do last[j] = j end
   for i = 1, #a do
-    local diagonal = row[0]
-    row[0] = i
+    row = { [0] = i }
     for j = 1, #b do
-      local cost = a:sub(i, i) == b:sub(j, j) and 0 or 1
-      diagonal, row[j] = row[j], math.min(row[j] + 1, row[j - 1] + 1, diagonal + cost)
+      local x, y = a:sub(i, i), b:sub(j, j)
+      row[j] = math.min(last[j] + 1, row[j - 1] + 1, last[j - 1] + (x == y and 0 or 1))
+      if i > 1 and j > 1 and x == b:sub(j - 1, j - 1) and a:sub(i - 1, i - 1) == y then row[j] = math.min(row[j], before[j - 2] + 1) end
     end
+    before, last = last, row
   end
-  return row[#b]
+  return last[#b]
 end
 
 ---The name among `names` that `name` was probably meant to be, or nil.
 ---@param name string
 ---@param names string[]
 function M.nearest(name, names)
-  local best, least = nil, math.max(1, #name // 3) + 1
+  local best, least = nil, math.max(2, #name // 3) + 1
   table.sort(names)
   for _, n in ipairs(names) do
     local d = edits(name:lower(), n:lower())

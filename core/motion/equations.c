@@ -315,6 +315,13 @@ static mt_status derive(mt_model *m) {
         mt_mover *v = &m->mover[i];
         if (mt_split_sum(s, v->rhs, &v->sum) != MT_OK)
             return mt_context(builder(m)->err, status(m), "equation of field '%s'", v->field->symbol->name);
+        if (v->sum.parity)
+            return builder(m)->status =
+                       mt_fail(builder(m)->err, MT_EPARITY,
+                               "equation of field '%s': its right-hand side is odd about a mirror wall, the "
+                               "field even; "
+                               "first derivatives have to come in pairs there (or make that axis periodic)",
+                               v->field->symbol->name);
         v->linear = mt_build_collect(builder(m), own_linear(m, i));
         derive_implicit(m, v);
         guard_mover(m, v);
