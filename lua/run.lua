@@ -132,8 +132,9 @@ local function next_event(m, run, time)
   local t = run.t1
   local function sooner(x) if x > time and x < t then t = x end end
   sooner(next_multiple(run.record_every, run.t0, time))
-  for _, list in ipairs { m.pictures, m.saves } do
-    for _, p in ipairs(list) do sooner(next_multiple(p.every or run.picture_every, run.t0, time)) end
+  for _, p in ipairs(m.pictures) do sooner(next_multiple(p.every or run.picture_every, run.t0, time)) end
+  for _, p in ipairs(m.saves) do
+    if p.every then sooner(next_multiple(p.every, run.t0, time)) end
   end
   for _, h in ipairs(m.every_hooks) do sooner(next_multiple(h.time, run.t0, time)) end
   for _, h in ipairs(m.at_hooks) do if not h.done then sooner(h.time) end end
