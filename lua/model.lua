@@ -122,7 +122,9 @@ end
 local function column_of(v)
   if measure.is(v) then return v end
   if core.kind(v) == "param" then
-    return measure.make(core.param_name(v), function() return core.param_value(v, measure.clock()) end, M.param_unit and M.param_unit(v) or "")
+    local m = measure.make(core.param_name(v), function() return core.param_value(v, measure.clock()) end)
+    m.param = v -- its unit is known when a schedule has taken it
+    return m
   end
   if core.is_expr(v) and core.number(v) then
     return measure.make(tostring(v), function() return core.number(v, measure.clock()) end)

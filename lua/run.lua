@@ -49,8 +49,8 @@ local function open_ledger(m, total)
   if not m.recorded then rawset(m, "recorded", { every = false, columns = default_columns(m) }) end
   choose_time_unit(total)
   local head = { { "time", time_unit, false }, { "stage", "", true }, { "step", time_unit, false } }
-  for _, c in ipairs(m.recorded.columns) do head[#head + 1] = { c.name, measure.unit(c), false } end
-  local name = #M.runs == 0 and "ledger.csv" or "ledger.csv"
+  for _, c in ipairs(m.recorded.columns) do head[#head + 1] = { c.name, c.param and models.param_unit(c.param) or measure.unit(c), false } end
+  local name = "ledger.csv"
   if M.ledger_model and M.ledger_model ~= m then
     name = "tables/ledger-" .. (#M.runs + 1) .. ".csv"
     core.sub_folder(M.folder, "tables")
