@@ -72,6 +72,7 @@ static double degree(const mt_expr *e) {
     case MT_SUB_OP: return fmax(degree(e->arg[0]), degree(e->arg[1]));
     case MT_CONST_OP: return 0;
     case MT_GRADSQ_OP: return 1000;
+    case MT_DERIV_OP: return 1001 + 1e-3 * e->axis; /* x before y before z */
     default: return mt_op_spectral(e->op) ? 1001 : e->contents & MT_HAS_FIELD ? 0.5 : 0;
     }
 }

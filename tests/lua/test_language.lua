@@ -1,0 +1,64 @@
+-- What the language promises, asked in the language itself: an assert that fails ends the run with exit code 2.
+local function same(a, b, what)
+  if a ~= b then error(string.format("%s: %s, expected %s", what or "value", tostring(a), tostring(b)), 2) end
+end
+local function near(a, b, tolerance, what)
+  if not (math.abs(a - b) <= tolerance) then error(string.format("%s: %.15g, expected %.15g", what or "value", a, b), 2) end
+end
+
+-- order and chance are the same in every process
+local keys = {}
+for k in pairs{ pear = 1, apple = 2, [3] = 3, [1] = 1, quince = 3 } do keys[#keys + 1] = tostring(k) end
+same(table.concat(keys, " "), "1 3 apple pear quince", "pairs")
+same(next{ b = 1, a = 2 }, "a", "next")
+near(math.random(), 0.5, 0.5, "random")
+
+-- numbers stay numbers, formulas are algebra
+same(exp(0), 1); same(max(2, 3, 1), 3); near(tanh(0.5), 0.46211715726001, 1e-13); same(type(log(2)), "number")
+local g = grid{ cells = {48, 32}, spacing = {0.5, 1}, walls = {"periodic", "mirror"} }
+local c = g:field("c", 0.5 + 0.1*cos(2*math.pi*g.x/12))
+local eta = g:field("eta", 0.2)
+for text, e in pairs{ ["c/eta"] = c/eta, ["0.5*gradsq(c)"] = gradsq(c)/2, ["5*c"] = 2*c + 3*c, ["0"] = tostring(c - c) == "0" and c - c,
+  ["c^3"] = c*c*c, ["laplacian(c*eta)"] = laplacian(c*eta), ["max(c, eta)"] = max(c, eta), ["-c"] = -c } do
+  same((tostring(e):gsub("^0%.5%*gradsq%(c%)$", "0.5*gradsq(c)"):gsub("^gradsq%(c%)/2$", "0.5*gradsq(c)")), text, "text")
+end
+same(tostring(dot(grad(c), grad(c))), "dx(c)^2 + dy(c)^2", "dot")
+same(tostring(derivative(c^3*eta, c)), "3*c^2*eta", "derivative")
+local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) + eta^2 }
+same(tostring(m:potential(c)), "2*c - 6*c^2 + 4*c^3 - laplacian(c)", "potential")
+
+-- measurements
+near(now(mean(c)), 0.5, 1e-15, "mean"); near(now(variance(c)), 0.005, 1e-15, "variance")
+near(now(maximum(c + eta)), 0.8, 2e-3, "maximum of a formula"); near(now(integral(eta)), 0.2*24*32, 1e-9, "integral")
+near(now(mean(gradsq(c))), 0.01/2*(2*math.pi/12)^2, 1e-12, "spectral derivative")
+same(now(domain_count(c, { level = 0.5 })), 2, "two stripes")
+near(now(interface(c, { level = 0.5 })), 4*32, 1e-9, "interface")
+near(now(wavelength(c)), 12, 1.2, "wavelength, to the width of a shell"); same(#now(domains(c)).sizes, 2, "sizes")
+near(now(phase_fraction(c, { above = false })) + now(phase_fraction(c)), 1, 1e-15)
+same(now(wavelength(g:field("noise", noise.normal{ seed = 4 }))), nil, "no wavelength in noise")
+
+-- starts
+near(now(mean(g:field("seeds", 0.1 + place{ radius = 3, count = 4, value = 1, seed = 2 }))), 0.1 + 4*math.pi*(9 + (math.pi*0.75)^2/12)/(24*32), 1e-3,
+  "placed discs with edges of width 0.75")
+near(now(variance(g:field("wave", wave{ wavelength = 6, amplitude = 0.2, direction = {1, 0} }))), 0.02, 1e-15, "wave")
+set(eta, 0.2 + 0*c); near(now(mean(eta)), 0.2, 1e-15, "set")
+
+-- hooks fire when they should, a schedule reaches its temperatures, time goes on through several runs
+local T = param("T", 4)
+m:conserve(c, { mobility = T/4 })
+m:relax(eta, { rate = 1 })
+local calls, at, crossed = {}, nil, nil
+m:every(0.5, function(self) calls[#calls + 1] = self.time end)
+m:at(0.75, function(self) at = self.time end)
+m:when(function() return now(mean(eta)) < 0.1 end, function(self) crossed = self.time end)
+m:record{ every = 0.25, T, m:energy(), mean(c):as("mean"), mean(eta) }
+m:save{ c }
+m:run(schedule{ T, start = 4, hold{ 1, name = "soak" }, ramp{ to = 2, rate = 2 }, quench{ to = 8 }, hold{ 1 } })
+same(m.time, 3, "time"); same(#calls, 6, "calls"); same(calls[3], 1.5, "third call"); same(at, 0.75, "at"); near(now(T), 8, 0, "T")
+near(crossed, math.log(2)/2, 0.1, "crossing of a half, d eta/dt = -2 eta"); near(now(mean(eta)), 0.2*math.exp(-6), 1e-5, "relaxation")
+m:run{ duration = 1, accuracy = 1e-3 }
+same(m.time, 4, "time after a second run"); same(#calls, 8, "calls in the second run")
+
+-- errors can be caught and tell their line
+local ok, message = pcall(function() m:run{ duration = -1 } end)
+same(ok, false); assert(message:find("test_language.lua:%d+: run: option 'duration'"), message)
