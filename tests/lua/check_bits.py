@@ -54,6 +54,15 @@ for words in ("too coarse", "box is small", "Fastest wavelength 8.886", "growth 
     if words not in plan:
         sys.exit(f"FAILED: plan does not say '{words}':\n{plan}")
 
+with open(os.path.join(os.environ["SOURCE"], "examples/two_step_ageing.lua")) as f:
+    alloy = f.read()
+for wavelength, words in (("0.9*nm", "is near the distance of atoms, where a continuum model has no meaning"), ("2*nm", "interfaces will be about")):
+    with open(coarse, "w") as f:
+        f.write(alloy.replace("wavelength = 6*nm", "wavelength = " + wavelength).replace("0.6*nm", "0.1*nm"))
+    plan = subprocess.run([mottle, "plan", coarse, "cells=128"], capture_output=True, text=True, check=True).stdout
+    if words not in plan:
+        sys.exit(f"FAILED: plan does not say '{words}':\n{plan}")
+
 page = os.path.join(folders[0], "report.html")
 before = open(page).read()
 subprocess.run([mottle, "report", folders[0]], check=True, capture_output=True)
