@@ -83,7 +83,7 @@ for attempt in ('io.open("/etc/passwd")', 'os.execute("true")', 'os.remove("x")'
 
 
 def program(name, code, fragments, *arguments):
-    done = subprocess.run([mottle, *arguments], capture_output=True, text=True)
+    done = subprocess.run([mottle, *arguments], capture_output=True, text=True, cwd=folder)
     check(name, done.returncode, done.stderr if code else done.stdout, code, fragments)
 
 
