@@ -108,11 +108,10 @@ function M.from_array(t)
 end
 
 ---Values from a PNG picture beside the script: black and white stand for the values given.
----pixel is the size of a pixel; without it the picture is stretched over the box.
 function M.from_image(t)
   local o = options.read(t, "from_image", { { "file", "string", required = true }, { "black", "number", default = 0 },
     { "white", "number", default = 1 }, { "pixel", "positive" } })
-  local s = loader(function(f) core.read_image(M.folder, o.file, f, o.pixel) end) * (o.white - o.black)
+  local s = loader(function(f) core.read_image(M.folder, o.file, f) end) * (o.white - o.black)
   return s + o.black
 end
 
