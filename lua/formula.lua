@@ -12,7 +12,8 @@ local plain = {
 
 for name, f in next, plain do
   ---Function of numbers or formulas.
-  M[name] = function(a)
+  M[name] = function(a, ...)
+    if ... ~= nil then core.fail(name .. ": expected one value, found more" .. (name == "log" and "; log(x)/log(2) is the logarithm to base 2" or "")) end
     if type(a) == "number" then return f(a) end
     if a == nil then core.fail(name .. ": its argument is missing") end
     return core.apply(name, a)
@@ -61,7 +62,10 @@ function vector.__mul(a, b)
   return r
 end
 function vector.__unm(a) return a * -1 end
-function vector.__div(a, b) return a * (1 / b) end
+function vector.__div(a, b)
+  if is_vector(b) then core.fail("vectors: nothing can be divided by a vector") end
+  return a * (1 / b)
+end
 function vector.__tostring(a)
   local t = {}
   for i = 1, #a do t[i] = tostring(a[i]) end

@@ -70,17 +70,26 @@ static int apply(lua_State *L, mt_op op, int n) {
     return 1;
 }
 
+/* A vector or a starting state on the right knows what a formula on its left means; Lua asks the left operand
+ * first. */
+static int binary(lua_State *L, mt_op op, const char *event) {
+    if (!lua_istable(L, 2) || luaL_getmetafield(L, 2, event) == LUA_TNIL) return apply(L, op, 2);
+    lua_insert(L, 1);
+    lua_call(L, 2, 1);
+    return 1;
+}
+
 static int op_add(lua_State *L) {
-    return apply(L, MT_ADD_OP, 2);
+    return binary(L, MT_ADD_OP, "__add");
 }
 static int op_sub(lua_State *L) {
-    return apply(L, MT_SUB_OP, 2);
+    return binary(L, MT_SUB_OP, "__sub");
 }
 static int op_mul(lua_State *L) {
-    return apply(L, MT_MUL_OP, 2);
+    return binary(L, MT_MUL_OP, "__mul");
 }
 static int op_div(lua_State *L) {
-    return apply(L, MT_DIV_OP, 2);
+    return binary(L, MT_DIV_OP, "__div");
 }
 static int op_pow(lua_State *L) {
     return apply(L, MT_POW_OP, 2);
