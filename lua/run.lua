@@ -128,38 +128,55 @@ local function is_multiple(dt, t0, time)
   return math.abs(t0 + n * dt - time) <= 1e-9 * dt
 end
 
+-- What a script asks for counts from time 0, so that a loop of short runs keeps its beat; a default divides the run at hand.
+local function beat(every, default, run)
+  if every then return every, 0 end
+  return default, run.t0
+end
+
 local function next_event(m, run, time)
   local t = run.t1
   local function sooner(x) if x > time and x < t then t = x end end
-  sooner(next_multiple(run.record_every, run.t0, time))
-  for _, p in ipairs(m.pictures) do sooner(next_multiple(p.every or run.picture_every, run.t0, time)) end
-  for _, p in ipairs(m.saves) do
-    if p.every then sooner(next_multiple(p.every, run.t0, time)) end
-  end
-  for _, h in ipairs(m.every_hooks) do sooner(next_multiple(h.time, run.t0, time)) end
   for _, h in ipairs(m.at_hooks) do if not h.done then sooner(h.time) end end
   if run.schedule then
     for _, s in ipairs(run.schedule.stages) do sooner(s.upto) end
   end
+  -- a beat that rounding alone parts from an end is that end: no second call, no step of no length
+  local function sooner_beat(every, default)
+    local dt, from = beat(every, default, run)
+    if dt and next_multiple(dt, from, time) < t - 1e-9 * dt then t = next_multiple(dt, from, time) end
+  end
+  sooner_beat(m.recorded.every, run.record_every)
+  for _, p in ipairs(m.pictures) do sooner_beat(p.every, run.picture_every) end
+  for _, p in ipairs(m.saves) do sooner_beat(p.every) end
+  for _, h in ipairs(m.every_hooks) do sooner_beat(h.time) end
   return t
 end
 
-local function happen(m, run, stage, stage_ends)
-  local time, last = m.time, m.time >= run.t1
-  if stage_ends or last or is_multiple(run.record_every, run.t0, time) then record(m, stage) end
-  for _, p in ipairs(m.pictures) do
-    if last or stage_ends or is_multiple(p.every or run.picture_every, run.t0, time) then draw(m, p, stage) end
-  end
-  for _, p in ipairs(m.saves) do
-    if last or (p.every and is_multiple(p.every, run.t0, time)) then save(m, p) end
-  end
-  for _, h in ipairs(m.every_hooks) do if is_multiple(h.time, run.t0, time) then h.f(m) end end
+local function call_at_hooks(m)
   for _, h in ipairs(m.at_hooks) do
-    if not h.done and h.time <= time then
+    if not h.done and h.time <= m.time then
       h.done = true
       h.f(m)
     end
   end
+end
+
+local function happen(m, run, stage, stage_ends)
+  local time, last = m.time, m.time >= run.t1
+  local function due(every, default)
+    local dt, from = beat(every, default, run)
+    return dt and is_multiple(dt, from, time)
+  end
+  if stage_ends or last or due(m.recorded.every, run.record_every) then record(m, stage) end
+  for _, p in ipairs(m.pictures) do
+    if last or stage_ends or due(p.every, run.picture_every) then draw(m, p, stage) end
+  end
+  for _, p in ipairs(m.saves) do
+    if last or due(p.every) then save(m, p) end
+  end
+  for _, h in ipairs(m.every_hooks) do if due(h.time) then h.f(m) end end
+  call_at_hooks(m)
 end
 
 local function look(m)
@@ -222,7 +239,7 @@ local function prepare(m, o)
     run.t1 = t0 + o.duration
   end
   local total = run.t1 - t0
-  run.record_every = m.recorded and m.recorded.every or total / 100
+  run.record_every = total / 100
   run.picture_every = total / 4
   return run
 end
@@ -262,6 +279,7 @@ function M.run(m, o)
       for _, p in ipairs(m.pictures) do draw(m, p, stage) end
       for _, p in ipairs(m.saves) do if p.every then save(m, p) end end
     end
+    call_at_hooks(m) -- those whose time is here or past already
     advance(m, run)
   end)
   rawset(m, "wall", (m.wall or 0) + core.clock() - run.began)
