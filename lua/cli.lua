@@ -87,10 +87,18 @@ local function load_script(path)
   return chunk
 end
 
+local full = "not enough memory" -- what Lua says when the script's own tables and text have reached their limit
+
 -- Lua's own messages (arithmetic on nil ...) carry the line already; ours do too.
 local function tidy(message)
   message = tostring(message)
+  if message == full then return "no memory is left for the script's own tables and text (they may take a quarter of this machine's); keep less of them" end
   return (message:gsub("^%[string \"(.-)\"%]", "%1"))
+end
+
+local function failure_code(message)
+  local code = core.exit_code()
+  return code ~= 0 and code or message == full and 5 or 2
 end
 
 local function run_command(args)
@@ -113,8 +121,7 @@ local function run_command(args)
   if not good then
     run.close(tidy(message))
     core.write(2, "mottle: " .. tidy(message) .. "\n")
-    local code = core.exit_code()
-    return code ~= 0 and code or 2
+    return failure_code(message)
   end
   inputs.check()
   run.close()
@@ -143,8 +150,7 @@ local function plan_command(args)
   if good then core.fail("the script ran to its end without a run, so there is nothing to plan") end
   if message ~= done then
     core.write(2, "mottle: " .. tidy(message) .. "\n")
-    local code = core.exit_code()
-    return code ~= 0 and code or 2
+    return failure_code(message)
   end
   return 0
 end

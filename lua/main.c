@@ -75,6 +75,26 @@ static int protected_main(lua_State *L) {
     return 1;
 }
 
+/* What a script itself holds (tables, text; not fields) stays below a quarter of the machine's memory: one
+ * that only grows ends with a message, not by taking the machine with it. */
+typedef struct budget {
+    size_t used, most;
+} budget;
+
+static void *budgeted(void *ud, void *block, size_t old, size_t size) {
+    budget *b = ud;
+    if (!block) old = 0; /* then Lua tells a type here */
+    if (size == 0) {
+        free(block);
+        b->used -= old;
+        return NULL;
+    }
+    if (size > old && size - old > b->most - b->used) return NULL;
+    void *moved = realloc(block, size);
+    if (moved) b->used = b->used - old + size;
+    return moved;
+}
+
 static int report(lua_State *L, const glue *g) {
     const char *text = lua_tostring(L, -1);
     fprintf(stderr, "mottle: %s\n", text ? text : "an error without a text");
@@ -89,7 +109,8 @@ int main(int argc, char **argv) {
     sigaction(SIGINT, &act, NULL);
     sigaction(SIGTERM, &act, NULL);
     signal(SIGPIPE, SIG_IGN);
-    lua_State *L = luaL_newstate();
+    budget lua = {0, (size_t)sysconf(_SC_PHYS_PAGES) / 4 * (size_t)sysconf(_SC_PAGESIZE)};
+    lua_State *L = lua_newstate(budgeted, &lua);
     if (!L || mt_forms_new(&g.forms, &err) != MT_OK) {
         fprintf(stderr, "mottle: out of memory at the start\n");
         return code;

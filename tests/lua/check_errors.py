@@ -2,6 +2,7 @@
 found; nothing is left half-written. Scripts cannot leave their environment. A stop from outside is obeyed everywhere."""
 import csv
 import os
+import resource
 import signal
 import subprocess
 import sys
@@ -67,6 +68,38 @@ bad("neither even nor odd", 'local g = grid{ cells = {16}, spacing = 1, walls = 
 bad("missing file", 'local g = grid{ cells = {16}, spacing = 1 }\nlocal c = g:field("c", from_array{ file = "no.npy" })', 4, "script.lua:2:", "no.npy")
 bad("error in a hook", full + "m:every(1, function() error('mine') end)\nm:run{ duration = 5 }", 2, "script.lua:5:", "mine")
 bad("Lua's own error", "local x = nil + 1", 2, "script.lua:1:", "nil")
+
+# Each: what stands in line 5 after the model, and what the message has to say beside the line.
+for text, *words in (
+    ("m:run{ duration = 1, accuracy = -1 }", "'accuracy'", "positive number", "-1"), ("m:run{ duration = 0/0 }", "'duration'", "nan"),
+    ("m:run{ duration = 1/0 }", "'duration'", "inf"), ("m:run{}", "either duration or schedule"), ("m.run{ duration = 1 }", "with a colon"),
+    ("m:runn{ duration = 1 }", "'runn'", "did you mean 'run'"), ("m:record{ c }", "field", "mean(...)"), ("m:record{ every = 1 }", "no columns"),
+    ("m:picture{ c, map = 'rainbow' }\nm:run{ duration = 1 }", "'rainbow'", "slate"), ("g:field('c', 1)", "of that name already"), ("g:field('d')", "its start is missing"),
+    ("m:conserve(c, { mobility = 1 })", "said already"), ("m:every(-1, print)", "positive time"), ("m:at(1)", "function", "nil"),
+    ("m:when(true, print)", "true or false"), ("m.accuracy = 1", "'accuracy' cannot be set"), ("m:run(schedule{ param('T', 1), quench{ to = 3 } })", "take no time", "hold{...}"),
+    ("m:run(schedule{ hold{ 1 } })", "expected the param"), ("m:run(schedule{ param('T', 1), 3 })", "entry 2", "number"), ("m:run(schedule{ param('T', 1), hold{ 0 } })", "duration"),
+    ("ramp{ to = 1 }", "either rate or duration"), ("place{ radius = 1, value = 1 }", "one of fraction, count or at"), ("noise.uniform{}", "'seed' is missing"),
+    ("set(c, 'x')", "starting state", "string"), ("local T = unit.kelvin", "kelvin"), ("require 'thermos'", "no module 'thermos'"), ("input('a b', 1)", "letters, digits and _"),
+    ("grid{ cells = {4, 4, 4, 4}, spacing = 1 }", "1, 2 or 3 entries", "4"), ("grid{ cells = 16.5, spacing = 1 }", "whole number", "16.5"), ("grid{ cells = 16, spacing = 0 }", "positive", "0"),
+    ("grid{ cells = {4, 4}, spacing = {1} }", "axis y"), ("grid{ cells = 1e300, spacing = 1 }", "GB"), ("grid{ cell = 4, spacing = 1 }", "'cell'", "did you mean 'cells'"),
+    ("local function f() return 1 + f() end f()", "stack overflow"), ("local s = ('x'):rep(1e12)", "too large"),
+):
+    bad(text, full + text, 2, "script.lua:%d:" % (5 + text.count("\n")), *words)
+for text, given, *words in (("input('n', 1)", "n=", "a number"), ("input('n', 1)", "n=3 parsecs", "parsecs"), ("input('b', true)", "b=maybe", "true or false")):
+    bad(given, text, 2, "script.lua:1:", given, *words, arguments=[given])
+bad("a word after the script", "input('n', 1)", 2, "name=value", "'n'", arguments=["n"])
+
+# A script that only grows: no memory is left for it, and nothing else suffers.
+with open(mottle, "rb") as f:
+    sanitized = b"__asan_init" in f.read()  # reserves more address space than any limit leaves
+if not sanitized:
+    with open(os.path.join(folder, "script.lua"), "w") as f:
+        f.write(full + "m:run{ duration = 0.1 }\nlocal s = 'x'\nwhile true do s = s .. s end")
+    p = subprocess.run([mottle, "run", os.path.join(folder, "script.lua"), "--into", os.path.join(folder, "grown"), "--replace", "--quiet"], capture_output=True, text=True,
+                       timeout=60, preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_AS, (700 << 20, 700 << 20)))
+    check("a script that only grows", p.returncode, p.stderr, 5, ["no memory is left", "keep less"])
+    if "no memory is left" not in open(os.path.join(folder, "grown", "report.html")).read():
+        failures.append("the report of a script that ran out of memory does not say so")
 
 # --- ways out -------------------------------------------------------------------------------------------------------------------
 for attempt in ('io.open("/etc/passwd")', 'os.execute("true")', 'os.remove("x")', 'load("return 1")', 'loadstring("return 1")', 'dofile("/etc/passwd")',
