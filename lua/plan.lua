@@ -146,7 +146,12 @@ function M.text(m, run)
   local size = {}
   for a = 1, g.dim do size[a] = text.length(g.length[a], real) end
   out[#out + 1] = core.describe(m.core)
-  out[#out + 1] = string.format("Box\n  %s cells, %s, spacing %s", table.concat(g.cells, " x "), table.concat(size, " x "), text.length(g.spacing[1], real))
+  local walls, spacing = {}, {}
+  for a = 1, g.dim do
+    walls[a], spacing[a] = g.mirror[a] and "mirror" or "periodic", text.length(g.spacing[a], real)
+  end
+  out[#out + 1] = string.format("Box\n  %s cells, %s, spacing %s, walls %s", table.concat(g.cells, " x "), table.concat(size, " x "),
+    table.concat(spacing, " x "), table.concat(walls, " x "))
   if run.schedule then
     out[#out + 1] = "Schedule"
     for _, s in ipairs(run.schedule.stages) do
