@@ -143,6 +143,7 @@ local function plan_command(args)
   local done = {}
   function run.plan(m, r, options)
     core.write(1, require("plan").text(m, r, options))
+    require("sandbox").leaving = done
     error(done, 0) -- unwinds the script
   end
   local chunk = load_script(rest[1])

@@ -8,6 +8,8 @@
 
 #include <lauxlib.h>
 #include <lua.h>
+#include <signal.h>
+#include <stdbool.h>
 
 #include "core/base/thread.h"
 #include "core/files/folder.h"
@@ -24,8 +26,10 @@ typedef struct glue {
 
 glue *glue_of(lua_State *L);
 
-/* Set by the signal handler: the script is to end. */
-extern volatile int glue_stop;
+/* Counts the signals that ask the script to end. */
+extern volatile sig_atomic_t glue_stop;
+/* Whether the script is to end: asked for, and the run is not being closed already. */
+bool glue_stopping(void);
 
 /* Raises "<script>:<line>: <text>" (position left out where no script is on the stack). */
 int glue_fail(lua_State *L, mt_status status, const char *format, ...) MT_PRINTF(3, 4);

@@ -11,7 +11,12 @@
 
 #include "core/base/memory.h"
 
-volatile int glue_stop;
+volatile sig_atomic_t glue_stop;
+static bool closing; /* ledger and report are being written: a first signal waits for them */
+
+bool glue_stopping(void) {
+    return glue_stop && !closing;
+}
 
 glue *glue_of(lua_State *L) {
     return *(glue **)lua_getextraspace(L);
@@ -89,13 +94,20 @@ static int where(lua_State *L) {
 }
 
 static int stopped(lua_State *L) {
-    lua_pushboolean(L, glue_stop);
+    lua_pushboolean(L, glue_stopping());
     return 1;
 }
 
 static int stop_heeded(lua_State *L) {
     (void)L;
     glue_stop = 0;
+    closing = true;
+    return 0;
+}
+
+/* An error that a script caught is no longer the reason why it ends. */
+static int forget_status(lua_State *L) {
+    glue_of(L)->status = MT_OK;
     return 0;
 }
 
@@ -195,6 +207,7 @@ void glue_open_base(lua_State *L) {
         {"stopped", stopped},
         {"stop_heeded", stop_heeded},
         {"raise_stopped", raise_stopped},
+        {"forget_status", forget_status},
         {"clock", clock_now},
         {"date", date_now},
         {"write", write_to},

@@ -2,6 +2,7 @@
 #include "lua/glue.h"
 
 #include <math.h>
+#include <stdio.h>
 #include <string.h>
 
 #include "core/base/memory.h"
@@ -187,36 +188,72 @@ static int write_array(lua_State *L) {
     return 0;
 }
 
-/* read_array(folder, name, field): the shape must be the grid's */
+/* Shape as the file states it: slowest axis first, without axes of one cell in front. */
+static void shape_text(char *text, size_t room, const int n[], int dim) {
+    while (dim > 1 && n[dim - 1] == 1) dim--;
+    size_t at = (size_t)snprintf(text, room, "(%d", n[dim - 1]);
+    for (int i = dim - 2; i >= 0; i--) at += (size_t)snprintf(text + at, room - at, ", %d", n[i]);
+    snprintf(text + at, room - at, ")");
+}
+
+/* read_array(folder, name, field): the shape must be the grid's, but for axes of one cell in front */
 static int read_array(lua_State *L) {
     mt_error err = {0};
     mt_npy a;
     mt_field *f = glue_field(L, 3);
-    glue_check(
-        L, mt_npy_read(&a, folder_at(L, 1), luaL_checkstring(L, 2), f->grid->cells * sizeof(double), &err),
-        &err);
-    bool fits = a.dim == f->grid->dim;
-    for (int i = 0; i < a.dim && fits; i++) fits = a.n[i] == f->grid->n[i];
+    size_t bytes = f->grid->cells * sizeof(double),
+           most = (size_t)64 << 20; /* small ones are told by shape */
+    glue_check(L, mt_npy_read(&a, folder_at(L, 1), luaL_checkstring(L, 2), bytes > most ? bytes : most, &err),
+               &err);
+    char expected[60], found[60];
+    shape_text(expected, sizeof expected, f->grid->n, f->grid->dim);
+    shape_text(found, sizeof found, a.n, a.dim);
+    bool fits = strcmp(expected, found) == 0;
     if (fits) memcpy(f->values, a.values, f->grid->cells * sizeof(double));
     mt_npy_free(&a);
     if (!fits)
-        return glue_fail(L, MT_EINPUT, "the array '%s' has another shape than the grid", lua_tostring(L, 2));
+        return glue_fail(L, MT_EINPUT, "array '%s': expected the grid's shape, %s with x last, found %s",
+                         lua_tostring(L, 2), expected, found);
     mt_field_touch(f);
     return 0;
 }
 
-/* read_image(folder, name, field): brightness 0 .. 1, the image's lower left at the grid's origin, nearest
- * pixel */
+/* The pixel that holds the centre of cell i: by size of a pixel, or stretched over the box when pixel is 0.
+ */
+static int pixel_of(int i, int n, double h, int pixels, double pixel) {
+    if (pixel == 0) return (int)((2LL * i + 1) * pixels / (2LL * n));
+    int p = (int)((i + 0.5) * h / pixel);
+    return p < pixels ? p : pixels - 1;
+}
+
+/* Whether pixels of this size cover the box; half a cell may be missing, since only centres are asked for. */
+static bool covers(const mt_grid *g, const mt_image *im, double pixel) {
+    return pixel == 0 || (im->width * pixel >= (g->n[0] - 0.5) * g->h[0] &&
+                          im->height * pixel >= (g->n[1] - 0.5) * g->h[1]);
+}
+
+/* read_image(folder, name, field, pixel): brightness 0 .. 1, the image's lower left at the grid's origin,
+ * nearest pixel. pixel: its size, 0 to stretch the image over the box */
 static int read_image(lua_State *L) {
     mt_error err = {0};
     mt_image im;
     mt_field *f = glue_field(L, 3);
     const mt_grid *g = f->grid;
+    const char *name = luaL_checkstring(L, 2);
+    double pixel = luaL_optnumber(L, 4, 0);
     if (g->dim != 2) return glue_fail(L, MT_EINPUT, "an image starts a field on a grid of two axes");
-    glue_check(L, mt_png_read(&im, folder_at(L, 1), luaL_checkstring(L, 2), 0, &err), &err);
+    glue_check(L, mt_png_read(&im, folder_at(L, 1), name, 0, &err), &err);
+    if (!covers(g, &im, pixel)) {
+        int width = im.width, height = im.height;
+        mt_image_free(&im);
+        return glue_fail(
+            L, MT_EINPUT, "image '%s': %d x %d pixels of size %g make %g x %g, less than the box of %g x %g",
+            name, width, height, pixel, width * pixel, height * pixel, g->n[0] * g->h[0], g->n[1] * g->h[1]);
+    }
     for (int y = 0; y < g->n[1]; y++)
         for (int x = 0; x < g->n[0]; x++) {
-            int px = (int)((long long)x * im.width / g->n[0]), py = (int)((long long)y * im.height / g->n[1]);
+            int px = pixel_of(x, g->n[0], g->h[0], im.width, pixel),
+                py = pixel_of(y, g->n[1], g->h[1], im.height, pixel);
             f->values[(size_t)y * (size_t)g->n[0] + (size_t)x] =
                 im.grey[(size_t)py * (size_t)im.width + (size_t)px];
         }

@@ -255,19 +255,25 @@ typedef struct tick_ctx {
     bool failed, single;
 } tick_ctx;
 
+/* Also the table is made in here: memory may end while it is. */
+static int call_tick(lua_State *L) {
+    const mt_run_state *s = lua_touserdata(L, 2);
+    lua_settop(L, 1);
+    push_state(L, s);
+    lua_call(L, 1, 0);
+    return 0;
+}
+
 static bool tick(void *ctx, const mt_run_state *s) {
     tick_ctx *t = ctx;
     lua_State *L = t->L;
-    if (glue_stop || t->single) return true;
+    if (glue_stopping() || t->single) return true;
     if (s->steps % 16 || !lua_isfunction(L, 3)) return false;
+    lua_pushcfunction(L, call_tick);
     lua_pushvalue(L, 3);
-    push_state(L, s);
-    if (lua_pcall(L, 1, 1, 0) != LUA_OK) {
-        t->failed = true; /* the message stays on the stack */
-        return true;
-    }
-    lua_pop(L, 1);
-    return false;
+    lua_pushlightuserdata(L, (void *)s);
+    t->failed = lua_pcall(L, 2, 0, 0) != LUA_OK; /* the message stays on the stack */
+    return t->failed;
 }
 
 /* advance(model, until, tick function or nil, single) -> true when `until` was reached, false when stopped on
@@ -281,7 +287,7 @@ static int advance(lua_State *L) {
     luaL_checkstack(L, 8, NULL);
     mt_status st = mt_model_advance(m, until, tick, &t, &err);
     if (t.failed) return lua_error(L);
-    if (st == MT_ESTOPPED && t.single && !glue_stop) {
+    if (st == MT_ESTOPPED && t.single && !glue_stopping()) {
         lua_pushboolean(L, 0);
         return 1;
     }

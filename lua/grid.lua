@@ -3,7 +3,8 @@ local core = require "core"
 local options = require "options"
 local formula = require "formula"
 
-local M = { all = {}, of = setmetatable({}, { __mode = "k" }), folder = nil }
+-- Grids are held weakly: a script that makes one model after another must not keep all their arrays.
+local M = { all = setmetatable({}, { __mode = "v" }), count = 0, of = setmetatable({}, { __mode = "k" }), folder = nil }
 
 local Grid = { kind = "grid" }
 Grid.__index = Grid
@@ -59,6 +60,7 @@ function M.grid(t)
     core.fail(string.format("grid: %.4g cells; a model with one field would take about %.4g GB, and this machine has %.4g GB",
       count, count * 48 / 1e9, installed / 1e9))
   end
+  collectgarbage() -- it does not see how large arrays are, so it would wait too long with those of earlier models
   g.core = core.grid(g.cells, g.spacing, g.mirror)
   g.count = count
   g.length = {}
@@ -66,7 +68,8 @@ function M.grid(t)
     g[axis_names[a]] = core.coord(a - 1)
     g.length[a] = g.cells[a] * g.spacing[a]
   end
-  M.all[#M.all + 1] = g
+  M.count = M.count + 1
+  M.all[M.count] = g
   return g
 end
 
@@ -108,10 +111,11 @@ function M.from_array(t)
 end
 
 ---Values from a PNG picture beside the script: black and white stand for the values given.
+---pixel is the size of a pixel; without it the picture is stretched over the box.
 function M.from_image(t)
   local o = options.read(t, "from_image", { { "file", "string", required = true }, { "black", "number", default = 0 },
     { "white", "number", default = 1 }, { "pixel", "positive" } })
-  local s = loader(function(f) core.read_image(M.folder, o.file, f) end) * (o.white - o.black)
+  local s = loader(function(f) core.read_image(M.folder, o.file, f, o.pixel) end) * (o.white - o.black)
   return s + o.black
 end
 
@@ -234,12 +238,16 @@ end
 ---The grid a formula lives on: of its fields, else the last one made.
 function M.find(e)
   if M.of[e] then return M.of[e] end
-  for _, g in ipairs(M.all) do
-    for _, f in ipairs(g.fields) do
+  for i = 1, M.count do
+    local g = M.all[i]
+    for _, f in ipairs(g and g.fields or {}) do
       if core.is_expr(e) and core.contains(e, f) then return g end
     end
   end
-  return M.all[#M.all] or core.fail("there is no grid yet")
+  for i = M.count, 1, -1 do
+    if M.all[i] then return M.all[i] end
+  end
+  core.fail("there is no grid yet")
 end
 
 return M

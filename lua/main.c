@@ -16,16 +16,19 @@ extern const struct {
     size_t size;
 } mt_lua_modules[];
 
-/* The first signal asks; a second one, when something does not listen, ends the program at once. */
+/* The first signal asks; a second one, when something does not listen (a string pattern, a long step), ends
+ * the program at once: files are whole all the same, since each is written under another name first. */
 static void on_signal(int number) {
+    static const char text[] = "\nstopping after this step; once more to end at once\n";
     (void)number;
     if (glue_stop++) _exit(130);
+    if (isatty(2)) (void)!write(2, text, sizeof text - 1);
 }
 
 /* Scripts that never come back to us are interrupted here: every 10000 instructions, in every coroutine. */
 static void on_count(lua_State *L, lua_Debug *ar) {
     (void)ar;
-    if (glue_stop) glue_fail(L, MT_ESTOPPED, "stopped on request");
+    if (glue_stopping()) glue_fail(L, MT_ESTOPPED, "stopped on request");
 }
 
 static int find_module(lua_State *L) {
@@ -57,10 +60,19 @@ static void close_search(lua_State *L) {
     lua_pop(L, 2);
 }
 
+/* Methods of strings reach the library's own table, so it is closed there. */
+static void no_bytecode(lua_State *L) {
+    lua_getglobal(L, "string");
+    lua_pushnil(L);
+    lua_setfield(L, -2, "dump");
+    lua_pop(L, 1);
+}
+
 static int protected_main(lua_State *L) {
     int argc = (int)lua_tointeger(L, 1);
     char **argv = lua_touserdata(L, 2);
     luaL_openlibs(L);
+    no_bytecode(L);
     close_search(L);
     lua_sethook(L, on_count, LUA_MASKCOUNT, 10000);
     lua_getglobal(L, "require");

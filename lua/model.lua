@@ -5,7 +5,7 @@ local grids = require "grid"
 local measure = require "measure"
 local schedule = require "schedule"
 
-local M = { all = {}, runner = nil }
+local M = { runner = nil }
 
 local Model = { kind = "model" }
 
@@ -41,7 +41,6 @@ function M.model(t)
   else
     m.grid, m.core = false, false
   end
-  M.all[#M.all + 1] = m
   return setmetatable(m, Model)
 end
 
@@ -166,7 +165,7 @@ function Model:picture(t)
   field_list(t, "picture")
   for i = 1, #t do
     local what = o.name or (core.kind(t[i]) == "field" and core.field_name(t[i])) or ("formula" .. (#self.pictures + 1))
-    self.pictures[#self.pictures + 1] = { e = t[i], every = o.every, low = o.low, high = o.high, map = o.map, scale = o.scale, name = what, n = 0 }
+    self.pictures[#self.pictures + 1] = { e = t[i], every = o.every, low = o.low, high = o.high, map = o.map, scale = o.scale, name = what }
   end
 end
 
@@ -177,7 +176,7 @@ function Model:save(t)
   field_list(t, "save")
   for i = 1, #t do
     local what = o.name or (core.kind(t[i]) == "field" and core.field_name(t[i])) or ("formula" .. (#self.saves + 1))
-    self.saves[#self.saves + 1] = { e = t[i], every = o.every, name = what, n = 0 }
+    self.saves[#self.saves + 1] = { e = t[i], every = o.every, name = what }
   end
 end
 

@@ -59,7 +59,7 @@ local function open_ledger(m, total)
   rawset(m, "ledger", core.table(M.folder, name, head))
   rawset(m, "ledger_head", head)
   rawset(m, "rows", {})
-  M.runs[#M.runs + 1] = m
+  M.runs[#M.runs + 1] = #M.runs == 0 and m or { ledger = m.ledger } -- the report tells the first model; the others may be collected
 end
 
 local function record(m, stage)
@@ -77,12 +77,20 @@ end
 
 -- --- pictures and fields ------------------------------------------------------------------------------------------------------
 
+local numbers = {}
+-- Numbered within the run folder, not within a model: a script may make many models of one field's name.
+local function next_file(pattern, name)
+  local key = name:gsub("[^%w%-_]", "_")
+  local full = pattern .. key
+  numbers[full] = (numbers[full] or -1) + 1
+  return string.format(pattern, key, numbers[full])
+end
+
 local function draw(m, p, stage)
   if p.last == m.time then return end
   p.last = m.time
   local f, g = measure.values(p.e, "picture")
-  local name = string.format("pictures/%s-%04d.png", p.name:gsub("[^%w%-_]", "_"), p.n)
-  p.n = p.n + 1
+  local name = next_file("pictures/%s-%04d.png", p.name)
   local title = (stage ~= "" and stage .. ", " or "") .. (real() and "" or "time ") .. text.time(m.time, real())
   core.picture(M.folder, name, f, { low = p.low, high = p.high, map = p.map, scale = p.scale, title = title, quantity = p.name,
     spacing = g.dim > 1 and g.spacing[1] == g.spacing[2] and g.spacing[1] or 0, metres = real() })
@@ -93,8 +101,7 @@ local function save(m, p)
   if p.last == m.time then return end
   p.last = m.time
   local f = measure.values(p.e, "save")
-  core.write_array(M.folder, string.format("fields/%s-%04d.npy", p.name:gsub("[^%w%-_]", "_"), p.n), f)
-  p.n = p.n + 1
+  core.write_array(M.folder, next_file("fields/%s-%04d.npy", p.name), f)
 end
 
 -- --- progress ------------------------------------------------------------------------------------------------------------------
@@ -244,8 +251,11 @@ local function prepare(m, o)
   return run
 end
 
+local going = false
 local function stops_cleanly(m, f)
+  going = true
   local ok, message = xpcall(f, function(e) return e end)
+  going = false
   if ok then return end
   local state = core.state(m.core)
   M.stopped_at = state.time
@@ -254,6 +264,7 @@ local function stops_cleanly(m, f)
 end
 
 function M.run(m, o)
+  if going then core.fail("run: a hook cannot start a run; let it set what the script looks at after the run") end
   inputs.check()
   local run = prepare(m, o)
   if M.plan then M.plan(m, run, o) end -- does not come back

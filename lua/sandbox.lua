@@ -43,11 +43,15 @@ local function sorted_pairs(t)
   end, t, nil
 end
 
--- A stop asked for from outside passes through every protected call.
+M.leaving = nil -- set to what unwinds the script (mottle plan)
+
+-- A stop asked for from outside passes through every protected call, and so does what unwinds the script.
 local function passing_stop(f)
   return function(...)
     local r = table.pack(f(...))
     if core.stopped() then core.raise_stopped() end
+    if M.leaving then error(M.leaving, 0) end
+    if not r[1] then core.forget_status() end
     return table.unpack(r, 1, r.n)
   end
 end
@@ -58,6 +62,12 @@ local function copy(t, without)
     if not (without and without[k]) then c[k] = v end
   end
   return c
+end
+
+-- Finalisers run with the hook off, so one that never ends could not be stopped.
+local function set_metatable(t, meta)
+  if type(meta) == "table" and rawget(meta, "__gc") ~= nil then core.fail("setmetatable: scripts have no finalisers (__gc)") end
+  return setmetatable(t, meta)
 end
 
 local function printer(...)
@@ -71,7 +81,7 @@ function M.make(folder, model)
   local loaded = {}
   local env = {
     assert = assert, error = error, ipairs = ipairs, select = select, tonumber = tonumber, tostring = tostring, type = type,
-    rawequal = rawequal, rawget = rawget, rawlen = rawlen, rawset = rawset, setmetatable = setmetatable,
+    rawequal = rawequal, rawget = rawget, rawlen = rawlen, rawset = rawset, setmetatable = set_metatable,
     getmetatable = function(v) if type(v) == "table" then return getmetatable(v) end end,
     next = sorted_next, pairs = sorted_pairs, pcall = passing_stop(pcall), xpcall = passing_stop(xpcall), print = printer,
     math = copy(math, { randomseed = true }), string = copy(string, { dump = true }), table = copy(table), utf8 = copy(utf8),

@@ -67,6 +67,8 @@ bad("neither even nor odd", 'local g = grid{ cells = {16}, spacing = 1, walls = 
     "m:run{ duration = 1 }", 2, "script.lua:5:", "mirror")
 bad("missing file", 'local g = grid{ cells = {16}, spacing = 1 }\nlocal c = g:field("c", from_array{ file = "no.npy" })', 4, "script.lua:2:", "no.npy")
 bad("error in a hook", full + "m:every(1, function() error('mine') end)\nm:run{ duration = 5 }", 2, "script.lua:5:", "mine")
+bad("a run from a hook", full + "m:every(1, function() m:run{ duration = 1 } end)\nm:run{ duration = 5 }", 2, "script.lua:5:", "hook")
+bad("an error after one that was caught", model + "pcall(m.conserve, m, c, { mobility = -1 })\nerror('mine')", 2, "script.lua:5:", "mine")
 bad("Lua's own error", "local x = nil + 1", 2, "script.lua:1:", "nil")
 
 # Each: what stands in line 5 after the model, and what the message has to say beside the line.
@@ -103,7 +105,7 @@ if not sanitized:
 
 # --- ways out -------------------------------------------------------------------------------------------------------------------
 for attempt in ('io.open("/etc/passwd")', 'os.execute("true")', 'os.remove("x")', 'load("return 1")', 'loadstring("return 1")', 'dofile("/etc/passwd")',
-                'loadfile("/etc/passwd")', 'string.dump(print)', 'debug.getregistry()', 'package.loadlib("x", "y")', 'require("/etc/passwd")',
+                'loadfile("/etc/passwd")', 'string.dump(print)', '(""):dump(print)', 'setmetatable({}, { __gc = function() while true do end end })', 'debug.getregistry()', 'package.loadlib("x", "y")', 'require("/etc/passwd")',
                 'require("../secret")', 'require("io")', 'require("core")', 'collectgarbage("stop")', 'getmetatable("").__index.dump(print)',
                 '_G.io.open("x")', 'getmetatable(_G).__index.io.open("x")', 'grid{ cells = {4}, spacing = 1 }:field("c", from_array{ file = "/etc/passwd" })',
                 'grid{ cells = {4}, spacing = 1 }:field("c", from_array{ file = "../x.npy" })'):
@@ -163,6 +165,17 @@ for name, text in (("loop", "while true do end"), ("loop in pcall", "while true 
     check(name, p.returncode, err, 130, ["stopped"])
     if time.time() - began > 3:
         failures.append(f"{name}: took {time.time() - began:.1f} s to stop")
+# What no hook reaches, here a pattern of O(n^4), ends with the second signal.
+p = start('("a"):rep(200000):match(".-.-.-.-b")')
+for _ in range(2):
+    time.sleep(0.5)
+    p.send_signal(signal.SIGINT)
+try:
+    p.communicate(timeout=10)
+except subprocess.TimeoutExpired:
+    p.kill()
+if p.returncode != 130:
+    failures.append(f"a second signal: exit code {p.returncode}")
 with open(os.path.join(folder, "stopped", "ledger.csv"), newline="") as f:
     rows = list(csv.reader(f))
 if len({len(r) for r in rows}) != 1:
