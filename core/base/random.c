@@ -26,15 +26,19 @@ void mt_philox(const uint32_t counter[4], const uint32_t key[2], uint32_t out[4]
     out[0] = c0, out[1] = c1, out[2] = c2, out[3] = c3;
 }
 
-/* In (0, 1): 53 bits and half a step, so that a logarithm is always finite. */
-static double unit(uint32_t high, uint32_t low) {
-    uint64_t bits = ((uint64_t)high << 21) ^ (low >> 11);
-    return ((double)bits + 0.5) * 0x1p-53;
+/* The upper 53 bits, 0 .. 2^53 - 1: all that a double holds without rounding. */
+static uint64_t bits53(uint32_t high, uint32_t low) {
+    return ((uint64_t)high << 21) ^ (low >> 11);
 }
 
+/* Uniform values are exact, so they are the same everywhere. Normal ones (Box & Muller 1958, both uniforms
+ * from one block) are as good as the C library's log and cos, which may differ in the last place from one
+ * library to the next. Adding 1 before scaling keeps the argument of the logarithm in (0, 1]; adding 1/2
+ * would round. */
 static double one(mt_random_kind kind, const uint32_t r[4]) {
-    if (kind == MT_RANDOM_UNIFORM) return 2 * unit(r[0], r[1]) - 1;
-    return sqrt(-2 * log(unit(r[0], r[1]))) * cos(2 * 3.14159265358979323846 * unit(r[2], r[3]));
+    double a = (double)bits53(r[0], r[1]), b = (double)bits53(r[2], r[3]);
+    if (kind == MT_RANDOM_UNIFORM) return a * 0x1p-52 - 1;
+    return sqrt(-2 * log((a + 1) * 0x1p-53)) * cos(2 * 3.14159265358979323846 * (b * 0x1p-53));
 }
 
 void mt_random_fill(mt_random_kind kind, uint64_t seed, uint64_t first, size_t n, uint32_t step,
