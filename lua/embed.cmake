@@ -1,4 +1,5 @@
-# Writes OUT: a C file with the texts of FILES (Lua modules) as arrays, by name without the ending.
+# Writes OUT: a C file with the texts of FILES (Lua modules) as arrays, by name without the ending. Character
+# constants, because a number above 127 would not fit a char.
 set(arrays "")
 set(table "")
 set(number 0)
@@ -6,7 +7,7 @@ foreach(file ${FILES})
   get_filename_component(name ${file} NAME_WE)
   file(READ ${file} hex HEX)
   file(SIZE ${file} size)
-  string(REGEX REPLACE "([0-9a-f][0-9a-f])" "0x\\1," bytes "${hex}")
+  string(REGEX REPLACE "([0-9a-f][0-9a-f])" "'\\\\x\\1'," bytes "${hex}")
   string(APPEND arrays "static const char text_${number}[] = {${bytes}0};\n")
   string(APPEND table "    {\"${name}\", text_${number}, ${size}},\n")
   math(EXPR number "${number} + 1")
