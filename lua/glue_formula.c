@@ -109,6 +109,12 @@ static int op_call(lua_State *L) {
     return glue_fail(L, MT_ESCRIPT, "a formula is not a function and cannot be called");
 }
 
+static int op_index(lua_State *L) {
+    return glue_fail(L, MT_ESCRIPT,
+                     "a formula has no '%s'; what can be named is a measurement, as mean(c):as(\"name\")",
+                     luaL_tolstring(L, 2, NULL));
+}
+
 /* Name of an operator -> its number. */
 static mt_op find_op(lua_State *L, const char *name) {
     for (int op = 0; op < MT_OP_COUNT; op++)
@@ -280,11 +286,21 @@ static int param_name(lua_State *L) {
     return 1;
 }
 
-/* param_value(p [, time]) ; param_set(p, value) ; param_history(p, times, values) */
+/* param_value(p [, time [, after]]), after: the later value at a jump ; param_set(p, value) ;
+ * param_history(p, times, values) */
 static int param_value(lua_State *L) {
     mt_symbol *s = ((param *)luaL_checkudata(L, 1, GLUE_PARAM))->symbol;
-    lua_pushnumber(L, lua_isnoneornil(L, 2) ? s->value : mt_symbol_at(s, luaL_checknumber(L, 2), true));
+    bool before = !lua_toboolean(L, 3);
+    lua_pushnumber(L, lua_isnoneornil(L, 2) ? s->value : mt_symbol_at(s, luaL_checknumber(L, 2), before));
     return 1;
+}
+
+/* param_present(p, time): formulas see the value at that time. A model does this for its own params as it
+ * steps; it does it again before each step, so this never disturbs it. */
+static int param_present(lua_State *L) {
+    mt_symbol *s = ((param *)luaL_checkudata(L, 1, GLUE_PARAM))->symbol;
+    s->value = mt_symbol_at(s, luaL_checknumber(L, 2), true);
+    return 0;
 }
 
 static int param_set(lua_State *L) {
@@ -311,9 +327,10 @@ static int param_history(lua_State *L) {
  */
 
 static const luaL_Reg operators[] = {
-    {"__add", op_add},   {"__sub", op_sub},       {"__mul", op_mul},    {"__div", op_div},
-    {"__pow", op_pow},   {"__unm", op_unm},       {"__lt", op_compare}, {"__le", op_compare},
-    {"__call", op_call}, {"__concat", op_concat}, {"__tostring", text}, {NULL, NULL},
+    {"__add", op_add},   {"__sub", op_sub},       {"__mul", op_mul},     {"__div", op_div},
+    {"__pow", op_pow},   {"__unm", op_unm},       {"__lt", op_compare},  {"__le", op_compare},
+    {"__call", op_call}, {"__concat", op_concat}, {"__index", op_index}, {"__tostring", text},
+    {NULL, NULL},
 };
 
 /* Fields and params take part in formulas: glue_motion.c asks for the same operators. */
@@ -342,6 +359,7 @@ void glue_open_formula(lua_State *L) {
         {"param", new_param},
         {"param_name", param_name},
         {"param_value", param_value},
+        {"param_present", param_present},
         {"param_set", param_set},
         {"param_history", param_history},
         {NULL, NULL},

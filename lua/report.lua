@@ -99,6 +99,7 @@ function M.words(run)
   local d = M.data(run)
   local rows = rows_of(run)
   local s = d.state
+  if not s then return string.format("%s: no run was started\nrun folder: %s\n", d.script, run.path) end
   local out = {}
   local function say(...) out[#out + 1] = string.format(...) end
   say("%s: %d steps (%d rejected), %d right-hand sides, %s of wall time on %d thread%s", d.script, s.steps, s.rejected, s.evaluations,

@@ -13,7 +13,11 @@ local report = require "report"
 local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {} }
 
 local clock_model
-measure.clock = function() return clock_model and clock_model.time or 0 end
+measure.clock = function()
+  local time = clock_model and clock_model.time or 0
+  schedule.present(time)
+  return time
+end
 
 local function real() return units.used end
 
@@ -137,17 +141,22 @@ end
 
 -- What a script asks for counts from time 0, so that a loop of short runs keeps its beat; a default divides the run at hand.
 local function beat(every, default, run)
+  if every and (run.t1 - run.t0) / every > 1e9 then
+    core.fail(string.format("every %.6g is too short: that would be %.6g times in a run of %.6g", every, (run.t1 - run.t0) / every, run.t1 - run.t0))
+  end
   if every then return every, 0 end
   return default, run.t0
 end
 
+-- Whether x comes after time by more than rounding: 0.3 and 0.1 + 0.2 are one time.
+local function after(x, time) return x - time > 1e-12 * math.max(math.abs(x), math.abs(time)) end
+
 local function next_event(m, run, time)
   local t = run.t1
-  local function sooner(x) if x > time and x < t then t = x end end
-  for _, h in ipairs(m.at_hooks) do if not h.done then sooner(h.time) end end
   if run.schedule then
-    for _, s in ipairs(run.schedule.stages) do sooner(s.upto) end
+    for _, s in ipairs(run.schedule.stages) do if s.upto > time and s.upto < t then t = s.upto end end
   end
+  for _, h in ipairs(m.at_hooks) do if not h.done and after(h.time, time) and after(t, h.time) then t = h.time end end
   -- a beat that rounding alone parts from an end is that end: no second call, no step of no length
   local function sooner_beat(every, default)
     local dt, from = beat(every, default, run)
@@ -162,7 +171,7 @@ end
 
 local function call_at_hooks(m)
   for _, h in ipairs(m.at_hooks) do
-    if not h.done and h.time <= m.time then
+    if not h.done and not after(h.time, m.time) then
       h.done = true
       h.f(m)
     end
@@ -288,7 +297,9 @@ function M.run(m, o)
     if fresh then
       record(m, stage)
       for _, p in ipairs(m.pictures) do draw(m, p, stage) end
-      for _, p in ipairs(m.saves) do if p.every then save(m, p) end end
+      for _, p in ipairs(m.saves) do
+        if p.every then save(m, p) else measure.values(p.e, "save") end -- what cannot be evaluated should fail now, not at the end
+      end
     end
     call_at_hooks(m) -- those whose time is here or past already
     advance(m, run)

@@ -4,6 +4,13 @@ local options = require "options"
 
 local M = {}
 
+local following = setmetatable({}, { __mode = "k" }) -- params that have a history
+
+---Params that follow a schedule take their value at a time, also those that no model's equations contain.
+function M.present(time)
+  for p in next, following do core.param_present(p, time) end
+end
+
 local Stage = { kind = "stage" }
 local Schedule = { kind = "schedule" }
 Schedule.__index = Schedule
@@ -12,14 +19,14 @@ local function stage(t) return setmetatable(t, Stage) end
 
 ---A fast change to a temperature: at a rate, or at once.
 function M.quench(t)
-  local o = options.read(t, "quench", { { "to", "number", required = true }, { "rate", "positive" }, { "name", "string" } })
+  local o = options.read(t, "quench", { { "to", "number", required = true }, { "rate", "positive" }, { "name", "name" } })
   return stage { type = "quench", to = o.to, rate = o.rate, name = o.name }
 end
 
 ---A slow change to a temperature: at a rate or over a duration.
 function M.ramp(t)
   local o = options.read(t, "ramp", { { "to", "number", required = true }, { "rate", "positive" }, { "duration", "positive" },
-    { "name", "string" } })
+    { "name", "name" } })
   if (o.rate and 1 or 0) + (o.duration and 1 or 0) ~= 1 then core.fail("ramp: say either rate or duration") end
   return stage { type = "ramp", to = o.to, rate = o.rate, duration = o.duration, name = o.name }
 end
@@ -27,7 +34,7 @@ end
 ---A hold: hold{ 4*hour, name = "first ageing" }
 function M.hold(t)
   if type(t) == "number" then t = { t } end
-  local o = options.read(t, "hold", { { "duration", "positive" }, { "name", "string" } }, true)
+  local o = options.read(t, "hold", { { "duration", "positive" }, { "name", "name" } }, true)
   local d = t[1] or o.duration
   if type(d) ~= "number" or not (d > 0) then core.fail("hold: expected its duration first, as hold{ 4*unit.hour }") end
   return stage { type = "hold", duration = d, name = o.name }
@@ -38,7 +45,7 @@ function M.schedule(t)
   options.read(t, "schedule", { { "start", "number" } }, true)
   local p = t[1]
   if core.kind(p) ~= "param" then core.fail("schedule: expected the param that changes first, as schedule{ T, start = ..., ... }") end
-  local s = setmetatable({ param = p, start = t.start or core.param_value(p), stages = {} }, Schedule)
+  local s = setmetatable({ param = p, given = t.start, start = t.start or core.param_value(p), stages = {} }, Schedule)
   local count = {}
   for i = 2, #t do
     local st = t[i]
@@ -59,9 +66,15 @@ function M.is(v) return getmetatable(v) == Schedule end
 ---Lays the stages out from time t0: fills from, upto, at, to of each stage, sets the param's history.
 ---@return number end time
 function M.lay_out(s, t0)
+  local reached = core.param_value(s.param, t0, true)
+  s.start = s.given or reached -- without a start it goes on from what the last schedule reached
   local times, values, t, v = { t0 }, { s.start }, t0, s.start
   local function knot(time, value)
     times[#times + 1], values[#values + 1] = time, value
+  end
+  if t0 > 0 and reached ~= s.start then -- a jump the model has to know of: its history of steps ends there
+    values[1] = reached
+    knot(t0, s.start)
   end
   for _, st in ipairs(s.stages) do
     st.from, st.at = t, v
@@ -81,6 +94,7 @@ function M.lay_out(s, t0)
     else i = i + 1 end
   end
   core.param_history(s.param, times, values)
+  following[s.param] = true
   return t
 end
 

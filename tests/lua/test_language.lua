@@ -97,3 +97,44 @@ near(half, math.log(2), 0.011, "half-life, to a step"); near(now(mean(u)), exp(-
 -- errors can be caught and tell their line
 local ok, message = pcall(function() m:run{ duration = -1 } end)
 same(ok, false); assert(message:find("test_language.lua:%d+: run: option 'duration'"), message)
+
+-- a param follows its schedule also where no equation contains it; the next schedule goes on from what was reached
+local ms = grid{ cells = 8, spacing = 1 }
+local v = ms:field("v", 1)
+local mv, T3, seen = model{}, param("T3", 5), {}
+mv:evolve(v, -v)
+mv:record{ T3, (2*T3)^1, mean(v), every = 1 }
+mv:at(1, function() seen[#seen + 1] = now(T3) + now(mean(0*v + T3))/1000 end)
+mv:run(schedule{ T3, start = 10, ramp{ to = 8, rate = 1 } })
+near(seen[1], 9.009, 1e-12, "half way down"); near(now(2*T3), 16, 1e-12, "at the end of the ramp")
+mv:run(schedule{ T3, hold{ 1 }, quench{ to = 6 } })
+near(now(T3), 8, 1e-12, "held")
+mv:run(schedule{ T3, hold{ 1 } })
+near(now(T3), 6, 1e-12, "after a quench that ended a schedule")
+mv:run(schedule{ T3, start = 3, ramp{ to = 4, duration = 1 } })
+mv:run{ duration = 1 }
+near(now(T3), 4, 1e-12, "kept after the last schedule"); near(mv.time, 6, 1e-12, "time")
+
+-- a new start is a jump that the equations feel at once: dw/dt = S w grows by exp(1*1 + 2*1)
+local w, S = ms:field("w", 1), param("S", 1)
+local mw = model{}
+mw:evolve(w, S*w)
+mw:record{ mean(w), S }
+mw:run(schedule{ S, hold{ 1 } })
+mw:run(schedule{ S, start = 2, hold{ 1 } })
+near(now(mean(w)), math.exp(3), 0.02*math.exp(3), "growth over two schedules")
+
+-- times that rounding alone parts are one time
+local mu, hits = model{}, {}
+local z = ms:field("z", 1)
+mu:evolve(z, -z)
+for _, t in ipairs{ 0.1 + 0.2, 0.3, 0.6, 0.1*7 } do mu:at(t, function(self) hits[#hits + 1] = string.format("%.1f", self.time) end) end
+mu:run{ duration = 0.3 }
+for _ = 1, 4 do mu:run{ duration = 0.1 } end
+same(table.concat(hits, " "), "0.3 0.3 0.6 0.7", "hooks at times that are not exact")
+
+-- a start that fails and is caught leaves a program that goes on
+local neg = ms:field("neg", -1)
+local mn = model{ energy = neg*log(neg) + gradsq(neg) }
+mn:conserve(neg, { mobility = 1 })
+same(pcall(mn.run, mn, { duration = 1 }), false, "start outside the logarithm")
