@@ -2,6 +2,7 @@
 local core = require "core"
 local text = require "text"
 local inputs = require "input"
+local options = require "options"
 local run = require "run"
 local models = require "model"
 
@@ -33,8 +34,10 @@ local function parse(args, with_value, without)
   for k in next, without do names[#names + 1] = "--" .. k end
   local i = 1
   while i <= #args do
-    local name, value = args[i]:match("^%-%-([%w%-]+)=?(.*)$")
-    if name and without[name] then o[name] = true
+    local name, sign, value = args[i]:match("^%-%-([%w%-]+)(=?)(.*)$")
+    if name and without[name] then
+      if sign == "=" then return nil, "option --" .. name .. " takes no value" end
+      o[name] = true
     elseif name and with_value[name] then
       if value == "" then
         i = i + 1
@@ -91,7 +94,7 @@ local full = "not enough memory" -- what Lua says when the script's own tables a
 
 -- Lua's own messages (arithmetic on nil ...) carry the line already; ours do too.
 local function tidy(message)
-  message = tostring(message)
+  if type(message) ~= "string" then return "the script ended with error(...) of a " .. options.kind(message) .. "; give it a text to say what is wrong" end
   if message == full then return "no memory is left for the script's own tables and text (they may take a quarter of this machine's); keep less of them" end
   return (message:gsub("^%[string \"(.-)\"%]", "%1"))
 end
@@ -168,7 +171,7 @@ local commands = { run = run_command, plan = plan_command, report = report_comma
 
 return function(args)
   local command = table.remove(args, 1)
-  for _, a in ipairs(args) do if a == "--help" then command = "--help" end end
+  for _, a in ipairs(args) do if a == "--help" or a == "-h" or a == "--version" then command = a end end
   if command == nil or command == "--help" or command == "-h" or command == "help" then
     core.write(command and 1 or 2, usage)
     return command and 0 or 2

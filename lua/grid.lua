@@ -172,7 +172,7 @@ end
 ---place{ radius, fraction or count or at = {{x, y}, ...}, value, seed, width }
 function M.place(t)
   local o = options.read(t, "place", { { "radius", "positive", required = true }, { "value", "number", required = true },
-    { "fraction", "positive" }, { "count", "whole" }, { "at", "table" }, { "seed", "whole", default = 1 },
+    { "fraction", "positive" }, { "count", "count" }, { "at", "table" }, { "seed", "whole", default = 1 },
     { "width", "positive" }, { "gap", "number" } })
   if (o.fraction and 1 or 0) + (o.count and 1 or 0) + (o.at and 1 or 0) ~= 1 then
     core.fail("place: say one of fraction, count or at")
@@ -185,7 +185,10 @@ function M.place(t)
     local centres = {}
     if o.at then
       for _, c in ipairs(o.at) do
-        for a = 1, g.dim do centres[#centres + 1] = c[a] or core.fail("place: each place needs " .. g.dim .. " coordinates") end
+        for a = 1, g.dim do
+          if type(c) ~= "table" or type(c[a]) ~= "number" then core.fail("place: each place in `at` has to be a list of " .. g.dim .. " coordinates") end
+          centres[#centres + 1] = c[a]
+        end
       end
     else
       local volume = 1
@@ -224,6 +227,7 @@ end
 function Grid:field(name, start)
   if getmetatable(self) ~= Grid then core.fail("write g:field(...) with a colon") end
   if type(name) ~= "string" or name == "" then core.fail("field: expected its name as text first, as g:field(\"c\", 0.5)") end
+  if not options.is_name(name) then core.fail("field: its name has to be text of 1 to 100 bytes on one line") end
   if start == nil then core.fail("field '" .. name .. "': its start is missing, as g:field(\"" .. name .. "\", 0.5)") end
   for _, other in ipairs(self.fields) do
     if core.field_name(other) == name then core.fail("field '" .. name .. "': the grid has a field of that name already") end

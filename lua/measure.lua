@@ -11,7 +11,7 @@ Measurement.__index = Measurement
 
 ---A measurement under another name in the ledger.
 function Measurement:as(name)
-  if type(name) ~= "string" then core.fail("as: expected the column's name as text") end
+  if not options.is_name(name) then core.fail("as: expected the column's name as text of 1 to 100 bytes on one line") end
   local copy = setmetatable({}, Measurement)
   for k, v in next, self do copy[k] = v end
   copy.name = name

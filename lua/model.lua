@@ -161,7 +161,7 @@ end
 function Model:picture(t)
   check_self(self, "picture")
   local o = options.read(t, "picture", { { "every", "positive" }, { "low", "number" }, { "high", "number" }, { "map", "string" },
-    { "name", "string" }, { "scale", "whole" } }, true)
+    { "name", "name" }, { "scale", "count" } }, true)
   field_list(t, "picture")
   for i = 1, #t do
     local what = o.name or (core.kind(t[i]) == "field" and core.field_name(t[i])) or ("formula" .. (#self.pictures + 1))
@@ -172,7 +172,7 @@ end
 ---m:save{ c, every = 1*hour }: fields as .npy
 function Model:save(t)
   check_self(self, "save")
-  local o = options.read(t, "save", { { "every", "positive" }, { "name", "string" } }, true)
+  local o = options.read(t, "save", { { "every", "positive" }, { "name", "name" } }, true)
   field_list(t, "save")
   for i = 1, #t do
     local what = o.name or (core.kind(t[i]) == "field" and core.field_name(t[i])) or ("formula" .. (#self.saves + 1))

@@ -13,10 +13,15 @@ function M.kind(v)
   return k
 end
 
+-- Names go into tables and the names of files.
+function M.is_name(v) return type(v) == "string" and #v >= 1 and #v <= 100 and not v:find("%c") end
+
 local checks = {
   number = function(v) return type(v) == "number" and v == v end,
   positive = function(v) return type(v) == "number" and v > 0 and v < math.huge end,
-  whole = function(v) return type(v) == "number" and v == math.floor(v) end,
+  whole = function(v) return type(v) == "number" and v == math.floor(v) and math.abs(v) <= 2 ^ 53 end,
+  count = function(v) return type(v) == "number" and v == math.floor(v) and v >= 1 and v <= 1e9 end,
+  name = function(v) return M.is_name(v) end,
   string = function(v) return type(v) == "string" end,
   boolean = function(v) return type(v) == "boolean" end,
   ["function"] = function(v) return type(v) == "function" end,
@@ -26,7 +31,8 @@ local checks = {
   param = function(v) return core.kind(v) == "param" end,
   any = function() return true end,
 }
-local names = { positive = "positive number", whole = "whole number", formula = "number or formula" }
+local names = { positive = "positive number", whole = "whole number", formula = "number or formula", count = "whole number from 1 to 1e9",
+  name = "text of 1 to 100 bytes on one line" }
 
 ---Checks the options `t` of `what` against a list of { name, type, default = , required = }.
 ---Positions (t[1], t[2] ...) are left to the caller: `list` says that they are allowed.

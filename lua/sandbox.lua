@@ -13,9 +13,22 @@ local M = {}
 
 local bundled = { thermo = true }
 
+local ordered = { number = true, string = true, boolean = true }
+
+-- Tables and functions as keys stand where memory happened to put them. One of a kind has its place all the same.
+local function check_order(keys)
+  for i = 2, #keys do
+    local kind = type(keys[i])
+    if not ordered[kind] and kind == type(keys[i - 1]) then
+      core.fail("pairs: two keys are each a " .. (kind == "userdata" and "field, param or formula" or kind) .. ", which have no order that is the same in every run; keep them in a list and use ipairs")
+    end
+  end
+end
+
 local function sorted_next(t, k)
   if type(t) ~= "table" then core.fail("next: expected a table, found " .. type(t)) end
   local keys = text.keys(t)
+  if k ~= nil then check_order(keys) end -- next(t) alone asks whether there is anything
   if k == nil then
     if keys[1] == nil then return nil end
     return keys[1], t[keys[1]]
@@ -33,6 +46,7 @@ local function sorted_pairs(t)
   if type(meta) == "table" and meta.__pairs then return meta.__pairs(t) end
   if type(t) ~= "table" then core.fail("pairs: expected a table, found " .. type(t)) end
   local keys, i = text.keys(t), 0
+  check_order(keys)
   return function()
     local k
     repeat

@@ -43,6 +43,7 @@ function M.keys(t)
     if type(a) == type(b) and type(a) ~= "table" and type(a) ~= "userdata" and type(a) ~= "function" and type(a) ~= "boolean" then
       return a < b
     end
+    if type(a) == "boolean" and type(b) == "boolean" then return not a and b end
     return type(a) < type(b)
   end)
   return keys

@@ -84,9 +84,20 @@ for text, *words in (
     ("set(c, 'x')", "starting state", "string"), ("local T = unit.kelvin", "kelvin"), ("require 'thermos'", "no module 'thermos'"), ("input('a b', 1)", "letters, digits and _"),
     ("grid{ cells = {4, 4, 4, 4}, spacing = 1 }", "1, 2 or 3 entries", "4"), ("grid{ cells = 16.5, spacing = 1 }", "whole number", "16.5"), ("grid{ cells = 16, spacing = 0 }", "positive", "0"),
     ("grid{ cells = {4, 4}, spacing = {1} }", "axis y"), ("grid{ cells = 1e300, spacing = 1 }", "GB"), ("grid{ cell = 4, spacing = 1 }", "'cell'", "did you mean 'cells'"),
+    ("noise.uniform{ seed = 1e300 }", "whole number", "1e+300"), ("noise.normal{ seed = 1/0 }", "whole number", "inf"), ("m:picture{ c, scale = 1e12 }", "'scale'", "from 1 to 1e9"),
+    ("place{ radius = 1, value = 1, count = 1/0 }", "'count'", "inf"), ("place{ radius = 1, value = 1, count = -3 }", "'count'", "-3"),
+    ("set(c, place{ radius = 1, value = 1, at = {3} })", "list of 2 coordinates"), ("set(c, place{ radius = 1, value = 1, at = {{'a', 1}} })", "list of 2 coordinates"),
+    ("mean(c):as('a\\nb')", "one line"), ("hold{ 1, name = 'a\\nb' }", "'name'", "one line"), ("g:field(('n'):rep(400), 0)", "1 to 100 bytes"), ("local e = (2*c):as('x')", "mean(c):as"),
+    ("m:run{ duration = 1 } m:every(1e-17, print) m:run{ duration = 1 }", "too short"),
+    ("pairs{ [{}] = 1, [{}] = 2 }", "no order", "a table"), ("pairs{ [c] = 1, [print] = 2, [tostring] = 3 }", "no order"),
     ("local function f() return 1 + f() end f()", "stack overflow"), ("local s = ('x'):rep(1e12)", "too large"),
 ):
     bad(text, full + text, 2, "script.lua:%d:" % (5 + text.count("\n")), *words)
+bad("an error that is no text", full + "error{ code = 3 }", 2, "a table", "give it a text")
+bad("an error that cannot be told", full + "error(setmetatable({}, { __tostring = function() error('x') end }))", 2, "a table")
+# what only the end of a long run would have shown
+bad("a formula to save", 'local g = grid{ cells = {16}, spacing = 1, walls = "mirror" }\nlocal c = g:field("c", 0.5)\nlocal m = model{}\nm:evolve(c, -c)\nm:save{ dx(c + dx(c)) }\n'
+    "m:at(0.5, function() error('too late') end)\nm:run{ duration = 1 }", 2, "script.lua:7:", "mirror")
 for text, given, *words in (("input('n', 1)", "n=", "a number"), ("input('n', 1)", "n=3 parsecs", "parsecs"), ("input('b', true)", "b=maybe", "true or false")):
     bad(given, text, 2, "script.lua:1:", given, *words, arguments=[given])
 bad("a word after the script", "input('n', 1)", 2, "name=value", "'n'", arguments=["n"])
@@ -143,6 +154,8 @@ program("missing script", 2, ["no.lua"], "run", os.path.join(folder, "no.lua"))
 program("unknown command", 2, ["did you mean 'run'"], "rum", good)
 program("unknown option", 2, ["--threds", "--threads"], "run", good, "--threds", "2")
 program("threads", 2, ["--threads", "many"], "run", good, "--threads", "many")
+program("flag with a value", 2, ["--replace takes no value"], "run", good, "--into", taken, "--replace=no")
+program("version of a command", 0, ["mottle 0."], "run", "--version")
 program("help", 0, ["Exit codes", "mottle plan"], "--help")
 program("version", 0, ["mottle 0."], "--version")
 program("report", 0, ["report.html"], "report", taken)
