@@ -66,15 +66,10 @@ function M.is(v) return getmetatable(v) == Schedule end
 ---Lays the stages out from time t0: fills from, upto, at, to of each stage, sets the param's history.
 ---@return number end time
 function M.lay_out(s, t0)
-  local reached = core.param_value(s.param, t0, true)
-  s.start = s.given or reached -- without a start it goes on from what the last schedule reached
+  s.start = s.given or core.param_value(s.param, t0, true) -- without a start it goes on from what the last schedule reached
   local times, values, t, v = { t0 }, { s.start }, t0, s.start
   local function knot(time, value)
     times[#times + 1], values[#values + 1] = time, value
-  end
-  if t0 > 0 and reached ~= s.start then -- a jump the model has to know of: its history of steps ends there
-    values[1] = reached
-    knot(t0, s.start)
   end
   for _, st in ipairs(s.stages) do
     st.from, st.at = t, v

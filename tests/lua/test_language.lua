@@ -115,14 +115,19 @@ mv:run(schedule{ T3, start = 3, ramp{ to = 4, duration = 1 } })
 mv:run{ duration = 1 }
 near(now(T3), 4, 1e-12, "kept after the last schedule"); near(mv.time, 6, 1e-12, "time")
 
--- a new start is a jump that the equations feel at once: dw/dt = S w grows by exp(1*1 + 2*1)
-local w, S = ms:field("w", 1), param("S", 1)
-local mw = model{}
-mw:evolve(w, S*w)
-mw:record{ mean(w), S }
-mw:run(schedule{ S, hold{ 1 } })
-mw:run(schedule{ S, start = 2, hold{ 1 } })
-near(now(mean(w)), math.exp(3), 0.02*math.exp(3), "growth over two schedules")
+-- two schedules, the second with a start of its own, step as one schedule with a jump: to the last bit
+local grown = {}
+for i, parts in ipairs{ { { start = 1, hold{ 1 } }, { start = 4, hold{ 1 } } }, { { start = 1, hold{ 1 }, quench{ to = 4 }, hold{ 1 } } } } do
+  local w, S, mw = ms:field("w" .. i, 1), param("S", 1), model{}
+  mw:evolve(w, S*w)
+  mw:record{ mean(w), every = 1 } -- the same landings
+  for _, p in ipairs(parts) do
+    table.insert(p, 1, S)
+    mw:run{ schedule = schedule(p), step = 0.01 }
+  end
+  grown[i] = now(mean(w))
+end
+same(grown[1], grown[2], "two schedules and one"); near(grown[1], math.exp(5), 0.01*math.exp(5), "growth by exp(1 + 4)")
 
 -- times that rounding alone parts are one time
 local mu, hits = model{}, {}
