@@ -116,6 +116,7 @@ local function run_command(args)
   function run.open_folder()
     run.folder = core.folder(run.path, o.replace and "replace" or "make")
     core.put(run.folder, "script.lua", run.script_text)
+    require("sources").keep(run.folder)
   end
   local chunk = load_script(rest[1])
   run.began = core.clock()

@@ -51,6 +51,15 @@ static int put_file(lua_State *L) {
     return 0;
 }
 
+/* copy(folder, name, from, source) */
+static int copy_file(lua_State *L) {
+    mt_error err = {0};
+    mt_folder *to = folder_at(L, 1), *from = folder_at(L, 3);
+    const char *name = luaL_checkstring(L, 2), *source = luaL_checkstring(L, 4);
+    glue_check(L, mt_atomic_copy(to, name, from, source, &err), &err);
+    return 0;
+}
+
 /* read(folder or nil, name) -> text; raises */
 static int read_file(lua_State *L) {
     mt_error err = {0};
@@ -285,15 +294,25 @@ static int exact_text(lua_State *L) {
 
 void glue_open_files(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"folder", open_folder},      {"close_folder", close_folder},
-        {"sub_folder", sub_folder},   {"put", put_file},
-        {"read", read_file},          {"has", has_file},
-        {"table", new_table},         {"row", table_row},
-        {"close_table", close_table}, {"read_table", read_table},
-        {"picture", write_picture},   {"write_array", write_array},
-        {"read_array", read_array},   {"read_image", read_image},
-        {"time_text", time_text},     {"length_text", length_text},
-        {"exact_text", exact_text},   {NULL, NULL},
+        {"folder", open_folder},
+        {"close_folder", close_folder},
+        {"sub_folder", sub_folder},
+        {"put", put_file},
+        {"read", read_file},
+        {"has", has_file},
+        {"table", new_table},
+        {"row", table_row},
+        {"close_table", close_table},
+        {"read_table", read_table},
+        {"picture", write_picture},
+        {"write_array", write_array},
+        {"read_array", read_array},
+        {"read_image", read_image},
+        {"time_text", time_text},
+        {"length_text", length_text},
+        {"exact_text", exact_text},
+        {"copy", copy_file},
+        {NULL, NULL},
     };
     static const luaL_Reg folder_meta[] = {{"__gc", close_folder}, {"__close", close_folder}, {NULL, NULL}};
     static const luaL_Reg table_meta[] = {{"__gc", drop_table}, {"__close", drop_table}, {NULL, NULL}};

@@ -2,6 +2,7 @@
 local core = require "core"
 local options = require "options"
 local formula = require "formula"
+local sources = require "sources"
 
 -- Grids are held weakly: a script that makes one model after another must not keep all their arrays.
 local M = { all = setmetatable({}, { __mode = "v" }), count = 0, of = setmetatable({}, { __mode = "k" }), folder = nil }
@@ -107,7 +108,10 @@ local function loader(load) return setmetatable({ parts = { { scale = 1, load = 
 ---Values from a .npy array beside the script; its shape has to be the grid's.
 function M.from_array(t)
   local o = options.read(t, "from_array", { { "file", "string", required = true } })
-  return loader(function(f) core.read_array(M.folder, o.file, f) end)
+  return loader(function(f)
+    core.read_array(M.folder, o.file, f)
+    sources.note(M.folder, o.file)
+  end)
 end
 
 ---Values from a PNG picture beside the script: black and white stand for the values given.
@@ -115,7 +119,10 @@ end
 function M.from_image(t)
   local o = options.read(t, "from_image", { { "file", "string", required = true }, { "black", "number", default = 0 },
     { "white", "number", default = 1 }, { "pixel", "positive" } })
-  local s = loader(function(f) core.read_image(M.folder, o.file, f, o.pixel) end) * (o.white - o.black)
+  local s = loader(function(f)
+    core.read_image(M.folder, o.file, f, o.pixel)
+    sources.note(M.folder, o.file)
+  end) * (o.white - o.black)
   return s + o.black
 end
 

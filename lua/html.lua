@@ -227,7 +227,7 @@ local cautions = [[
 local function provenance(d)
   local m = d.machine or {}
   return "<h2>Provenance</h2><p class=\"soft\">" .. escape(string.format("%s, %s, %s, %s; %s cores, %s threads; %s; wall time %s s.", d.program or "", m.fftw or "", m.lua or "", m.system or "",
-    m.cores or "?", d.threads or "?", d.date or "", text.number(d.wall_time or 0 / 0))) .. " The script is kept as script.lua, the inputs and seeds in summary.json.</p>"
+    m.cores or "?", d.threads or "?", d.date or "", text.number(d.wall_time or 0 / 0))) .. " The script is kept as script.lua, " .. (d.sources and #d.sources > 0 and "the files it read in inputs/, " or "") .. "the inputs and seeds in summary.json.</p>"
 end
 
 ---The page for a summary `d` and ledger rows; load(file) gives a picture's bytes.

@@ -8,6 +8,7 @@ local measure = require "measure"
 local schedule = require "schedule"
 local units = require "unit"
 local inputs = require "input"
+local sources = require "sources"
 
 local M = {}
 
@@ -120,6 +121,7 @@ function M.make(folder, model)
     end
     local chunk, message = core.load_text(core.read(folder, file), "@" .. file, env)
     if not chunk then core.fail(message) end
+    sources.note(folder, file)
     return chunk(name)
   end
 

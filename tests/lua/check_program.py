@@ -83,7 +83,7 @@ m:run(schedule{ T, start = 1000*unit.K, quench{ to = T1 }, hold{ 1*unit.minute, 
 path = script("aged", aged)
 program("run", path, "T1=627degC")
 run = os.path.join(folder, "aged.run")
-need(sorted(os.listdir(run)) == [".mottle", "fields", "ledger.csv", "pictures", "report.html", "script.lua", "summary.json"], f"the run folder holds {sorted(os.listdir(run))}")
+need(sorted(os.listdir(run)) == [".mottle", "fields", "inputs", "ledger.csv", "pictures", "report.html", "script.lua", "summary.json"], f"the run folder holds {sorted(os.listdir(run))}")
 rows = ledger("aged.run")
 need(rows[0] == ["time [s]", "stage", "step [s]", "T [K]", "energy [J/m]", "mean of c", "maximum(c)"], f"the head of the ledger: {rows[0]}")
 need([r[1] for r in rows[1:]] == ["first"] * 4 + ["ramp 1"] * 2 + ["hold 2"] * 3, f"stages: {[r[:2] for r in rows]}")
@@ -99,6 +99,32 @@ with open(os.path.join(run, "summary.json")) as f:
 need(summary["inputs"][0]["name"] == "T1" and abs(summary["inputs"][0]["value"] - 900.15) < 1e-9, "inputs are in the summary")
 with open(os.path.join(run, "script.lua")) as f:
     need(f.read() == aged, "the script is kept")
+need(np.array_equal(np.load(os.path.join(run, "inputs", "start.npy")), start), "the array it read is kept")
+
+# Everything a script reads is kept under a name of its own, whether it is read before or after the folder is made.
+os.makedirs(os.path.join(folder, "data"))
+np.save(os.path.join(folder, "data", "a.npy"), np.full((8, 8), 0.5))
+np.save(os.path.join(folder, "data_a.npy"), np.full((8, 8), 0.25))
+script("helper", "return { rate = 1 }\n")
+reads = script("reads", """
+local rate = require("helper").rate
+local g = grid{ cells = {8, 8}, spacing = 1 }
+local c = g:field("c", from_array{ file = "data/a.npy" } + from_array{ file = "data/a.npy" })
+local m = model{}
+m:evolve(c, -rate*c)
+m:run{ duration = 1 }
+set(c, from_array{ file = "data_a.npy" })
+""")
+for again in ([], ["--replace"]):
+    program("run", reads, *again)
+    kept = os.path.join(folder, "reads.run", "inputs")
+    need(sorted(os.listdir(kept)) == ["data_a.npy", "data_a_2.npy", "helper.lua"], f"inputs/ holds {os.listdir(kept)}")
+for copy, original in (("data_a.npy", "data/a.npy"), ("data_a_2.npy", "data_a.npy"), ("helper.lua", "helper.lua")):
+    with open(os.path.join(kept, copy), "rb") as f, open(os.path.join(folder, original), "rb") as g:
+        need(f.read() == g.read(), f"{copy} is {original}")
+with open(os.path.join(folder, "reads.run", "summary.json")) as f:
+    need({s["file"]: s["copy"] for s in json.load(f)["sources"]} == {"helper.lua": "inputs/helper.lua", "data/a.npy": "inputs/data_a.npy",
+         "data_a.npy": "inputs/data_a_2.npy"}, "the summary tells which copy is which")
 
 
 def page():
