@@ -64,10 +64,30 @@ local function homogeneous_means(m)
   return means
 end
 
+local axis_names = { "x", "y", "z" }
+
+---The fastest wave along each axis that has cells to show one, and which of them is the fastest of all.
+---@return table waves by axis
+---@return integer axis of the fastest
+local function along_axes(m, means, time)
+  local waves, best = {}, 1
+  for a = 1, m.grid.dim do
+    if a == 1 or m.grid.cells[a] > 1 then
+      waves[a] = M.fastest(m, means, a, time)
+      if waves[a].rate > waves[best].rate * (1 + 1e-6) then best = a end
+    end
+  end
+  return waves, best
+end
+
+-- Each axis has to show the wave that grows along it; axes with the same numbers are told once.
 local function advise(out, g, axis, wave, real)
   local lambda = 2 * math.pi / wave.k
   local cells, waves = lambda / g.spacing[axis], g.length[axis] / lambda
-  out[#out + 1] = string.format("    %.3g cells per fastest wavelength, %.3g fastest wavelengths per box", cells, waves)
+  local line = string.format("    %.3g cells per fastest wavelength, %.3g fastest wavelengths per box", cells, waves)
+  if out.told[line] then return end
+  out.told[line] = true
+  out[#out + 1] = line .. (axis > 1 and " along " .. axis_names[axis] or "")
   if cells < 8 then
     out[#out + 1] = string.format("    WARNING: the grid is too coarse for it: at least 8 cells per wavelength are common practice; take a spacing of %s or less", text.length(lambda / 8, real))
   end
@@ -86,20 +106,25 @@ end
 
 local function growth_text(out, m, means, time, label, real)
   local g = m.grid
-  local ok, wave = pcall(M.fastest, m, means, 1, time)
+  local ok, waves, best = pcall(along_axes, m, means, time)
   if not ok then
-    out[#out + 1] = "  " .. label .. ": " .. tostring(wave):gsub("^%S+:%d+: ", "")
+    out[#out + 1] = "  " .. label .. ": " .. tostring(waves):gsub("^%S+:%d+: ", "")
     return
   end
+  local wave = waves[best]
   if wave.stable then
     out[#out + 1] = string.format("  %s: stable against waves of every length (largest rate %s%s)", label, text.number(wave.rate), real and " 1/s" or "")
     out[#out + 1] = "    No decomposition in a run from small noise then means that the model cannot nucleate, not that the alloy is stable."
     return
   end
-  out[#out + 1] = string.format("  %s: unstable. Fastest wavelength %s, growth time (amplitude times e) %s%s", label, text.length(2 * math.pi / wave.k, real),
-    text.time(1 / wave.rate, real), wave.critical and ", critical wavelength " .. text.length(2 * math.pi / wave.critical, real) or "")
+  out[#out + 1] = string.format("  %s: unstable. Fastest wavelength %s%s, growth time (amplitude times e) %s%s", label, text.length(2 * math.pi / wave.k, real),
+    best > 1 and " (along " .. axis_names[best] .. ")" or "", text.time(1 / wave.rate, real), wave.critical and ", critical wavelength " .. text.length(2 * math.pi / wave.critical, real) or "")
   if wave.beyond then out[#out + 1] = "    WARNING: waves grow up to the grid's shortest one: the spacing is too coarse, or nothing damps short waves" end
-  advise(out, g, 1, wave, real)
+  out.told = {}
+  for a = 1, g.dim do
+    local w = waves[a]
+    if w and not w.stable then advise(out, g, a, w, real) end
+  end
 end
 
 local function stages_text(out, m, run, means, real)

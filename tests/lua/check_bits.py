@@ -54,6 +54,17 @@ for words in ("too coarse", "box is small", "Fastest wavelength 8.886", "growth 
     if words not in plan:
         sys.exit(f"FAILED: plan does not say '{words}':\n{plan}")
 
+# Gradient energy kappa = 0.25 along y against 1 along x: lambda goes with sqrt(kappa), the growth rate f''^2/(4 kappa) with 1/kappa
+# (Cahn & Hilliard's linear theory, as above), so y has half the wavelength and a quarter of the time; its cells are too wide.
+with open(coarse, "w") as f:
+    f.write('local g = grid{ cells = {100, 100}, spacing = {1, 0.8} }\nlocal c = g:field("c", 0.5)\n'
+            "local m = model{ energy = c^2*(1 - c)^2 + 0.5*dx(c)^2 + 0.125*dy(c)^2 }\nm:conserve(c, { mobility = 1 })\nm:run{ duration = 1 }")
+plan = subprocess.run([mottle, "plan", coarse], capture_output=True, text=True, check=True).stdout
+for words in ("Fastest wavelength 4.443 (along y)", "growth time (amplitude times e) 1,", "critical wavelength 3.142", "8.89 cells per fastest wavelength, 11.3 fastest wavelengths per box\n",
+              "5.55 cells per fastest wavelength, 18 fastest wavelengths per box along y\n    WARNING: the grid is too coarse"):
+    if words not in plan:
+        sys.exit(f"FAILED: plan does not say '{words}':\n{plan}")
+
 with open(os.path.join(os.environ["SOURCE"], "examples/two_step_ageing.lua")) as f:
     alloy = f.read()
 for wavelength, words in (("0.9*nm", "is near the distance of atoms, where a continuum model has no meaning"), ("2*nm", "interfaces will be about")):
