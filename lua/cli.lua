@@ -82,10 +82,11 @@ local function load_script(path)
   run.script, run.script_name = path, name
   if not core.has(nil, path) then core.fail("there is no script '" .. path .. "'") end
   run.script_text = core.read(nil, path)
+  if run.script_text:sub(1, 1) == "\27" then core.fail("'" .. path .. "' is compiled Lua, a binary file; a script is its text") end
   local own = core.folder(folder, "open")
   require("grid").folder = own
   local env = require("sandbox").make(own, models.model)
-  local chunk, message = core.load_text(run.script_text, "@" .. name, env)
+  local chunk, message = core.load_text(text.source(run.script_text), "@" .. name, env)
   if not chunk then core.fail(message) end
   return chunk
 end

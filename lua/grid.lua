@@ -227,6 +227,14 @@ function M.set(f, start)
   local list = {}
   for _, x in ipairs(g.fields) do list[#list + 1] = x end
   for _, x in ipairs(parts) do list[#list + 1] = x end
+  for i = 1, M.count do
+    local other = M.all[i]
+    for _, x in ipairs(other and other ~= g and other.fields or {}) do
+      if core.contains(sum, x) then
+        core.fail(string.format("field '%s': its start contains field '%s', which is on another grid", core.field_name(f), core.field_name(x)))
+      end
+    end
+  end
   core.field_set(f, g.core, sum, list, 0)
 end
 

@@ -54,7 +54,7 @@ local function sorted_pairs(t)
       i = i + 1
       k = keys[i]
     until k == nil or t[k] ~= nil
-    return k, t[k]
+    if k ~= nil then return k, t[k] end
   end, t, nil
 end
 
@@ -119,7 +119,7 @@ function M.make(folder, model)
     if not core.has(folder, file) then
       core.fail("require: there is no module '" .. name .. "' (bundled: thermo; or a file " .. file .. " beside the script)")
     end
-    local chunk, message = core.load_text(core.read(folder, file), "@" .. file, env)
+    local chunk, message = core.load_text(text.source(core.read(folder, file)), "@" .. file, env)
     if not chunk then core.fail(message) end
     sources.note(folder, file)
     return chunk(name)

@@ -26,7 +26,7 @@ end
 ---@param name string
 ---@param names string[]
 function M.nearest(name, names)
-  local best, least = nil, math.max(2, #name // 3) + 1
+  local best, least = nil, math.min(math.max(2, #name // 3), #name // 2) + 1 -- half of a short word is no likeness
   table.sort(names)
   for _, n in ipairs(names) do
     local d = edits(name:lower(), n:lower())
@@ -53,6 +53,15 @@ end
 function M.hint(name, names)
   local best = M.nearest(name, names)
   return best and ("; did you mean '" .. best .. "'?") or ""
+end
+
+---A script's text as Lua takes it: without a byte order mark, its first line a comment where it names a program (#!).
+---@param s string
+---@return string
+function M.source(s)
+  s = s:gsub("^\239\187\191", "")
+  if s:sub(1, 1) == "#" then s = "--" .. s end
+  return s
 end
 
 ---A number with four digits.

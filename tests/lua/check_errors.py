@@ -93,6 +93,13 @@ for text, *words in (
     ("local function f() return 1 + f() end f()", "stack overflow"), ("local s = ('x'):rep(1e12)", "too large"),
 ):
     bad(text, full + text, 2, "script.lua:%d:" % (5 + text.count("\n")), *words)
+bad("a start from another grid", full + "local h = grid{ cells = {16, 16}, spacing = 1 }\nh:field('d', 0.5*c)", 2, "script.lua:6:", "field 'd'", "'c'", "another grid")
+bad("compiled Lua", "\x1bLua", 2, "script.lua", "compiled")
+p = start("\ufeffprint(next({}), 'mark')")
+out, err = p.communicate(timeout=60)
+check("a byte order mark", p.returncode, out, 0, ["nil\tmark"])
+p = start("#!/usr/bin/env -S mottle run\nfor k in pairs(unit) do print(k) end\nprint(T)")
+check("the first line names a program, and a short name is like no other", p.wait(), p.stderr.read() + "end", 2, ["script.lua:3: 'T' is not defined\nend"])
 bad("an error that is no text", full + "error{ code = 3 }", 2, "a table", "give it a text")
 bad("an error that cannot be told", full + "error(setmetatable({}, { __tostring = function() error('x') end }))", 2, "a table")
 # what only the end of a long run would have shown
