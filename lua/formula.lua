@@ -120,6 +120,35 @@ function M.laplacian(e)
   return core.apply("laplacian", e)
 end
 
+-- One table per function and grid, kept as long as the function is.
+local tabulated, filters = setmetatable({}, { __mode = "k" }), 0
+
+local function tabulate(grid, f)
+  local of = tabulated[f]
+  if not of then
+    of = setmetatable({}, { __mode = "k" })
+    tabulated[f] = of
+  end
+  if not of[grid] then
+    local info = debug.getinfo(f, "u")
+    local args = info.isvararg and 3 or info.nparams
+    if args < 1 or args > 3 then core.fail("filter: its function has to take k, or kx, ky and kz, found " .. args .. " arguments") end
+    filters = filters + 1
+    of[grid] = core.filter(grid.core, filters == 1 and "filter" or "filter" .. filters, f, args)
+  end
+  return of[grid]
+end
+
+---Multiplies the spectrum of a formula by f(k), or f(kx, ky) or f(kx, ky, kz): wavenumbers in rad per length, f real and
+---even, tabulated once. filter(c - mean, function(k) return k > 0 and 1/k^2 or 0 end) solves -laplacian(v) = c - mean.
+function M.filter(e, f)
+  axes_of(e, "filter")
+  if type(f) ~= "function" then core.fail("filter: expected a function of the wavenumber as its second argument, found " .. options.kind(f)) end
+  return core.filtered(tabulate(M.grid_of(e), f), e)
+end
+
+M.grid_of = nil -- set by grid.lua: the grid a formula lives on
+
 M.time = core.time()
 
 M.seeds = {} -- of all noise in the script, for the summary

@@ -43,6 +43,7 @@ void glue_where(lua_State *L);
 
 #define GLUE_EXPR "mottle.expression"
 #define GLUE_GRID "mottle.grid"
+#define GLUE_FILTER "mottle.filter"
 #define GLUE_FIELD "mottle.field"
 #define GLUE_PARAM "mottle.param"
 #define GLUE_MODEL "mottle.model"

@@ -1,9 +1,11 @@
 /* Expressions and params. */
 #include "lua/glue.h"
 
+#include <math.h>
 #include <string.h>
 
 #include "core/base/memory.h"
+#include "core/formula/filter.h"
 
 /* --- coercion
  * ------------------------------------------------------------------------------------------------------------------
@@ -262,6 +264,100 @@ static int replace(lua_State *L) {
     return 1;
 }
 
+/* --- filters
+ * ---------------------------------------------------------------------------------------------------------------------
+ */
+
+/* The script's function, kept in the registry as long as core keeps the symbol. */
+typedef struct multiplier {
+    lua_State *L; /* main thread: outlives coroutines */
+    int ref, args;
+} multiplier;
+
+typedef struct call {
+    const double *k;
+    int args;
+    double value;
+} call;
+
+static int call_multiplier(lua_State *L) {
+    call *c = lua_touserdata(L, 2);
+    lua_settop(L, 1);
+    if (c->args == 1)
+        lua_pushnumber(L, sqrt(c->k[0] * c->k[0] + c->k[1] * c->k[1] + c->k[2] * c->k[2]));
+    else
+        for (int i = 0; i < c->args; i++) lua_pushnumber(L, c->k[i]);
+    lua_call(L, c->args, 1);
+    if (lua_type(L, -1) != LUA_TNUMBER)
+        return luaL_error(
+            L, "filter: its function has to give a real number, found %s at wave vector (%f, %f, %f)",
+            luaL_typename(L, -1), c->k[0], c->k[1], c->k[2]);
+    c->value = lua_tonumber(L, -1);
+    return 0;
+}
+
+static mt_status multiply(void *ctx, const double k[3], double *value, mt_error *err) {
+    multiplier *m = ctx;
+    call c = {k, m->args, 0};
+    lua_State *L = m->L;
+    if (!lua_checkstack(L, 8)) return mt_fail(err, MT_ENOMEM, "no memory for a filter");
+    lua_pushcfunction(L, call_multiplier);
+    lua_rawgeti(L, LUA_REGISTRYINDEX, m->ref);
+    lua_pushlightuserdata(L, &c);
+    if (lua_pcall(L, 2, 0, 0) != LUA_OK) {
+        const char *text = lua_tostring(L, -1);
+        mt_status st = mt_fail(err, MT_ESCRIPT, "%s", text ? text : "filter: an error without a text");
+        lua_pop(L, 1);
+        return st;
+    }
+    *value = c.value;
+    return MT_OK;
+}
+
+static void release_multiplier(void *ctx) {
+    multiplier *m = ctx;
+    luaL_unref(m->L, LUA_REGISTRYINDEX, m->ref);
+    mt_free(m);
+}
+
+static int free_filter(lua_State *L) {
+    mt_symbol_unref(luaL_checkudata(L, 1, GLUE_FILTER));
+    return 0;
+}
+
+/* filter(grid, name, function, number of its arguments) -> multiplier, to be applied with
+ * filtered(multiplier, e) */
+static int new_filter(lua_State *L) {
+    mt_error err = {0};
+    glue_grid *g = glue_grid_at(L, 1);
+    const char *name = luaL_checkstring(L, 2);
+    luaL_checktype(L, 3, LUA_TFUNCTION);
+    int args = (int)luaL_checkinteger(L, 4);
+    if (!g->sweeper) glue_check(L, mt_sweeper_new(&g->sweeper, g->grid, glue_of(L)->pool, &err), &err);
+    mt_symbol **f = glue_object(L, sizeof *f, GLUE_FILTER);
+    multiplier *m = NULL;
+    glue_check(L, mt_new(&m, 1, sizeof *m, "a filter", &err), &err);
+    lua_rawgeti(L, LUA_REGISTRYINDEX, LUA_RIDX_MAINTHREAD);
+    m->L = lua_tothread(L, -1);
+    lua_pop(L, 1);
+    m->args = args;
+    lua_pushvalue(L, 3);
+    m->ref = luaL_ref(L, LUA_REGISTRYINDEX);
+    mt_status st = mt_filter_new(f, glue_of(L)->forms, mt_sweeper_spectrum(g->sweeper), name,
+                                 (mt_filter_function){multiply, release_multiplier, m}, &err);
+    glue_check(L, st, &err);
+    return 1;
+}
+
+static int filtered(lua_State *L) {
+    mt_error err = {0};
+    mt_symbol **f = luaL_checkudata(L, 1, GLUE_FILTER);
+    const mt_expr *out = NULL, *e = glue_expr(L, 2, "filter");
+    glue_check(L, mt_expr_make(&out, MT_FILTER_OP, 1, &e, 0, *f, &err), &err);
+    glue_push_expr(L, out);
+    return 1;
+}
+
 /* --- params
  * ----------------------------------------------------------------------------------------------------------------------
  */
@@ -356,6 +452,8 @@ void glue_open_formula(lua_State *L) {
         {"dim", dim},
         {"partial", partial},
         {"replace", replace},
+        {"filter", new_filter},
+        {"filtered", filtered},
         {"param", new_param},
         {"param_name", param_name},
         {"param_value", param_value},
@@ -367,7 +465,9 @@ void glue_open_formula(lua_State *L) {
     static const luaL_Reg expr_meta[] = {{"__gc", free_expr}, {"__close", free_expr}, {NULL, NULL}};
     static const luaL_Reg param_meta[] = {{"__gc", free_param}, {"__close", free_param}, {NULL, NULL}};
     glue_class(L, GLUE_EXPR, expr_meta, NULL);
+    static const luaL_Reg filter_meta[] = {{"__gc", free_filter}, {"__close", free_filter}, {NULL, NULL}};
     glue_class(L, GLUE_PARAM, param_meta, NULL);
+    glue_class(L, GLUE_FILTER, filter_meta, NULL);
     glue_operators(L, GLUE_EXPR);
     glue_operators(L, GLUE_PARAM);
     luaL_setfuncs(L, functions, 0);

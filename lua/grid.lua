@@ -269,4 +269,6 @@ function M.find(e)
   core.fail("there is no grid yet")
 end
 
+formula.grid_of = M.find
+
 return M

@@ -106,7 +106,7 @@ function M.make(folder, model)
   env.coroutine.resume = passing_stop(coroutine.resume)
   math.randomseed(1, 0)
   for _, name in ipairs { "exp", "log", "sqrt", "sin", "cos", "tanh", "abs", "min", "max", "where", "above", "below", "dx", "dy", "dz",
-    "grad", "gradsq", "laplacian", "div", "dot", "noise", "param", "derivative", "time" } do env[name] = formula[name] end
+    "grad", "gradsq", "laplacian", "div", "dot", "filter", "noise", "param", "derivative", "time" } do env[name] = formula[name] end
   for _, name in ipairs { "grid", "wave", "place", "from_array", "from_image", "set" } do env[name] = grids[name] end
   for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "domains", "domain_count",
     "interface", "wavelength", "structure_factor", "now" } do env[name] = measure[name] end

@@ -2,8 +2,10 @@
  * long double. Slow and simple on purpose; shares no code with the kernels or the transforms. */
 #include "core/formula/expr.h"
 #include "core/formula/expr_inside.h"
+#include "core/formula/filter.h"
 #include "core/formula/map.h"
 
+#include <complex.h>
 #include <math.h>
 #include <string.h>
 
@@ -112,8 +114,6 @@ static void spectral(oracle *o, mt_op op, int only, const mt_expr *arg, const do
     size_t most = (size_t)(g->n[0] > g->n[1] ? g->n[0] : g->n[1]);
     if ((size_t)g->n[2] > most) most = (size_t)g->n[2];
     o->status = mt_expr_parity(arg, g, &parity, o->err);
-    if (!o->status && op == MT_FILTER_OP)
-        o->status = mt_fail(o->err, MT_EUNSUPPORTED, "filters are not evaluated by direct sums");
     real *from = mt_alloc(g->cells, sizeof *from), *to = mt_alloc(g->cells, sizeof *to);
     real *line = mt_alloc(2 * most, sizeof *line);
     if (!o->status && (!from || !to || !line))
@@ -126,6 +126,72 @@ static void spectral(oracle *o, mt_op op, int only, const mt_expr *arg, const do
         for (size_t i = 0; i < g->cells; i++) v[i] += (double)to[i];
     }
     mt_free(from), mt_free(to), mt_free(line);
+}
+
+/* --- filters: every mode by its own sums over the cells, one axis after the other
+ * ------------------------------------------------ */
+
+/* Basis functions of an axis, counted over signed modes: exp(i k x) or cos(k x) or sin(k x). */
+static int modes_of(const mt_grid *g, int axis) {
+    return g->wall[axis] == MT_PERIODIC ? 2 * ((g->n[axis] - 1) / 2) + 1 : g->n[axis];
+}
+
+static int signed_mode(const mt_grid *g, int axis, int i) {
+    return g->wall[axis] == MT_PERIODIC ? i - (g->n[axis] - 1) / 2 : i;
+}
+
+static long double complex basis(const mt_grid *g, int axis, bool odd, int mode, int cell) {
+    if (g->wall[axis] == MT_PERIODIC) return cexpl(2 * pi * I * mode * cell / g->n[axis]);
+    real x = pi * mode * (cell + 0.5L) / g->n[axis];
+    return odd ? sinl(x) : cosl(x);
+}
+
+static double wavenumber(const mt_grid *g, int axis, int mode) {
+    return (double)((g->wall[axis] == MT_PERIODIC ? 2 : 1) * pi * mode / ((real)g->n[axis] * g->h[axis]));
+}
+
+/* One mode's part of the filtered field is added to v. */
+static void filter_mode(oracle *o, const mt_symbol *filter, mt_parities parity, const int mode[3],
+                        const double *a, real *v) {
+    const mt_grid *g = o->grid;
+    double k[3] = {0, 0, 0}, f = 0;
+    long double complex c = 0;
+    real norm = 1;
+    for (int axis = 0; axis < g->dim; axis++) {
+        k[axis] = wavenumber(g, axis, mode[axis]);
+        norm *= g->n[axis] / (g->wall[axis] == MT_MIRROR && mode[axis] ? 2.0L : 1.0L);
+    }
+    o->status = mt_filter_at(filter, k, &f, o->err);
+    for (int pass = 0; pass < 2; pass++)
+        for (size_t i = 0; i < g->cells; i++) {
+            int place[3] = {(int)(i % (size_t)g->n[0]), (int)(i / (size_t)g->n[0] % (size_t)g->n[1]),
+                            (int)(i / ((size_t)g->n[0] * (size_t)g->n[1]))};
+            long double complex b = 1;
+            for (int axis = 0; axis < g->dim; axis++)
+                b *= basis(g, axis, (parity >> axis) & 1, mode[axis], place[axis]);
+            if (pass == 0)
+                c += conjl(b) * a[i];
+            else
+                v[i] += creall(b * c) * f / norm;
+        }
+}
+
+static void filtered(oracle *o, const mt_expr *e, const double *a, double *v) {
+    const mt_grid *g = o->grid;
+    mt_parities parity = 0;
+    o->status = mt_expr_parity(e->arg[0], g, &parity, o->err);
+    real *sum = mt_alloc(g->cells, sizeof *sum);
+    if (!sum && !o->status) o->status = mt_fail(o->err, MT_ENOMEM, "no memory for an evaluation");
+    int m[3] = {modes_of(g, 0), g->dim > 1 ? modes_of(g, 1) : 1, g->dim > 2 ? modes_of(g, 2) : 1};
+    for (int i = 0; i < m[0] * m[1] * m[2] && !o->status; i++) {
+        int mode[3] = {signed_mode(g, 0, i % m[0]), g->dim > 1 ? signed_mode(g, 1, i / m[0] % m[1]) : 0,
+                       g->dim > 2 ? signed_mode(g, 2, i / (m[0] * m[1])) : 0};
+        bool none = false;
+        for (int axis = 0; axis < g->dim; axis++) none = none || (((parity >> axis) & 1) && mode[axis] == 0);
+        if (!none) filter_mode(o, e->symbol, parity, mode, a, sum);
+    }
+    for (size_t i = 0; i < g->cells && !o->status; i++) v[i] = (double)sum[i];
+    mt_free(sum);
 }
 
 /* --- nodes
@@ -192,7 +258,10 @@ static double *values_of(oracle *o, const mt_expr *e) {
         gradsq(o, e, v);
     else if (mt_op_spectral(e->op)) {
         const double *a = values_of(o, e->arg[0]);
-        if (a) spectral(o, e->op, e->axis, e->arg[0], a, v);
+        if (a && e->op == MT_FILTER_OP)
+            filtered(o, e, a, v);
+        else if (a)
+            spectral(o, e->op, e->axis, e->arg[0], a, v);
     } else
         point(o, e, v);
     known = mt_map_at(&o->done, e, true);

@@ -203,6 +203,7 @@ void mt_symbol_unref(mt_symbol **symbol) {
     mt_symbol *s = *symbol;
     *symbol = NULL;
     if (!s || --s->refs) return;
+    if (s->release) s->release(s->ctx);
     mt_free(s->name), mt_free(s->knot_time), mt_free(s->knot_value), mt_free(s->table);
     mt_grid_unref(&s->grid);
     mt_free(s);

@@ -39,8 +39,12 @@ typedef struct mt_symbol {
      * at one time are a jump, the later value holds at that time. No knots: constant. */
     int knots;
     double *knot_time, *knot_value;
-    double *table; /* FILTER: multiplier in the layout of a spectral array of one double per mode:
-                      table[j*length + m] */
+    /* FILTER (filter.h): multiplier in the layout of a spectral array of one double per mode, table[j*length
+     * + m], and the function it was tabulated from. */
+    double *table;
+    mt_status (*at)(void *ctx, const double k[3], double *value, mt_error *err);
+    void (*release)(void *ctx);
+    void *ctx;
 } mt_symbol;
 
 typedef struct mt_forms mt_forms; /* the table of shared nodes and of symbols */

@@ -10,6 +10,7 @@
 #include <string.h>
 
 #include "core/base/memory.h"
+#include "core/formula/filter.h"
 
 typedef struct dual {
     double v;         /* value in the homogeneous state */
@@ -98,17 +99,21 @@ static dual binary(mt_op op, dual a, dual b) {
     }
 }
 
-static double filter_at_zero(const mt_expr *e) {
-    return e->symbol->table ? e->symbol->table[0] : 0;
+static dual filtered(walk *w, const mt_expr *e, dual a) {
+    const double none[3] = {0, 0, 0};
+    double here = 0, zero = 0;
+    mt_status st = mt_filter_at(e->symbol, w->k, &here, w->err);
+    if (!st) st = mt_filter_at(e->symbol, none, &zero, w->err);
+    if (st) w->status = st;
+    return (dual){a.v * zero, a.d * here};
 }
 
-/* Spectral operators take a constant to 0 (FILTER: to its value times the table at k = 0). */
+/* Spectral operators take a constant to 0 (FILTER: to its value times the multiplier at k = 0). */
 static dual spectral(walk *w, const mt_expr *e, dual a) {
     double k2 = w->k[0] * w->k[0] + w->k[1] * w->k[1] + w->k[2] * w->k[2];
     if (e->op == MT_DERIV_OP) return (dual){0, I * w->k[e->axis] * a.d};
     if (e->op == MT_LAPLACIAN_OP) return (dual){0, -k2 * a.d};
-    w->status = mt_fail(w->err, MT_EUNSUPPORTED, "growth of waves with a filter in the equations");
-    return (dual){a.v * filter_at_zero(e), 0};
+    return filtered(w, e, a);
 }
 
 static dual compute(walk *w, const mt_expr *e) {

@@ -9,13 +9,15 @@
 #include <string.h>
 
 #include "core/formula/build.h"
+#include "core/formula/filter.h"
 #include "core/formula/kernel.h"
+#include "core/space/sweep.h"
 
 typedef struct stage {
     mt_error err;
     mt_forms *forms;
     mt_grid *grid;
-    mt_symbol *c, *e, *T;
+    mt_symbol *c, *e, *T, *filter;
     mt_builder b;
     const mt_expr *nc, *ne, *nT;
 } stage;
@@ -41,7 +43,7 @@ static void open_stage(stage *s, int dim, const int n[], const mt_wall wall[]) {
 
 static void close_stage(stage *s) {
     mt_build_end(&s->b);
-    mt_symbol_unref(&s->c), mt_symbol_unref(&s->e), mt_symbol_unref(&s->T);
+    mt_symbol_unref(&s->c), mt_symbol_unref(&s->e), mt_symbol_unref(&s->T), mt_symbol_unref(&s->filter);
     mt_grid_unref(&s->grid);
     mt_forms_free(&s->forms);
 }
@@ -58,6 +60,41 @@ static const mt_expr *num(stage *s, double v) {
 static const mt_expr *where(stage *s, const mt_expr *a, const mt_expr *b, const mt_expr *c) {
     const mt_expr *x[3] = {a, b, c}, *out = NULL;
     mt_status st = mt_expr_make(&out, MT_WHERE_OP, 3, x, 0, NULL, &s->err);
+    return mt_build_keep(&s->b, st, out);
+}
+
+/* Even in k, different along each axis, and not in closed form of the other operators. */
+static mt_status bump(void *ctx, const double k[3], double *value, mt_error *err) {
+    (void)ctx, (void)err;
+    *value = 1 / (0.3 + k[0] * k[0] + 0.5 * k[1] * k[1] + 0.7 * k[2] * k[2]) - 0.2;
+    return MT_OK;
+}
+
+static mt_status skew(void *ctx, const double k[3], double *value, mt_error *err) {
+    (void)ctx, (void)err;
+    *value = 1 + k[0];
+    return MT_OK;
+}
+
+static mt_status pole(void *ctx, const double k[3], double *value, mt_error *err) {
+    (void)ctx, (void)err;
+    *value = 1 / (k[0] * k[0] + k[1] * k[1]);
+    return MT_OK;
+}
+
+static mt_status make_filter(stage *s, mt_filter_value at, mt_symbol **out) {
+    mt_sweeper *sweeper;
+    check_ok(mt_sweeper_new(&sweeper, s->grid, NULL, &s->err), &s->err);
+    mt_status st = mt_filter_new(out, s->forms, mt_sweeper_spectrum(sweeper), "bump",
+                                 (mt_filter_function){at, NULL, NULL}, &s->err);
+    mt_sweeper_free(&sweeper);
+    return st;
+}
+
+static const mt_expr *filtered(stage *s, const mt_expr *a) {
+    const mt_expr *out = NULL;
+    if (!s->filter) check_ok(make_filter(s, bump, &s->filter), &s->err);
+    mt_status st = mt_expr_make(&out, MT_FILTER_OP, 1, &a, 0, s->filter, &s->err);
     return mt_build_keep(&s->b, st, out);
 }
 
@@ -80,12 +117,13 @@ static const mt_expr *random_formula(stage *s, int depth, bool spectral) {
     }
     const mt_expr *a = random_formula(s, depth - 1, spectral),
                   *b = random_formula(s, dice((unsigned)depth), spectral);
-    switch (dice(spectral ? 10 : 8)) {
+    switch (dice(spectral ? 11 : 8)) {
     case 0: return un(s, functions[dice(5)], bin(s, MT_MUL_OP, num(s, 0.25), a));
     case 1: return bin(s, MT_POW_OP, a, num(s, 2 + dice(2)));
     case 2: return bin(s, MT_DIV_OP, a, bin(s, MT_ADD_OP, num(s, 2), bin(s, MT_MUL_OP, b, b)));
     case 3: return un(s, MT_LOG_OP, bin(s, MT_ADD_OP, num(s, 1.5), bin(s, MT_MUL_OP, a, a)));
     case 8: return un(s, MT_GRADSQ_OP, a);
+    case 10: return filtered(s, a);
     case 9: { /* derivatives in pairs, so that mirror walls are fine */
         int axis = (int)dice((unsigned)s->grid->dim);
         if (dice(2)) return un(s, MT_LAPLACIAN_OP, a);
@@ -323,6 +361,11 @@ static void named_variations(void **state) {
             bin(&s, MT_MUL_OP, un(&s, MT_EXP_OP, s.nc), bin(&s, MT_MUL_OP, dx, dx)),
             bin(&s, MT_MUL_OP, s.nc, un(&s, MT_LAPLACIAN_OP, lap)),
             bin(&s, MT_MUL_OP, s.nc, un(&s, MT_LOG_OP, s.nc)),
+            bin(&s, MT_MUL_OP, s.nc, filtered(&s, s.nc)),
+            bin(&s, MT_MUL_OP, kappa, filtered(&s, bin(&s, MT_MUL_OP, s.nc, s.ne))),
+            /* a gradient energy that depends on the normal of the interface */
+            bin(&s, MT_DIV_OP, bin(&s, MT_POW_OP, dx, num(&s, 4)),
+                bin(&s, MT_ADD_OP, num(&s, 0.1), un(&s, MT_GRADSQ_OP, s.nc))),
         };
         for (size_t i = 0; i < sizeof f / sizeof *f; i++) {
             lcg = 100 + i;
@@ -375,6 +418,26 @@ static void collected_polynomials(void **state) {
         evaluate(&s, g, c, e, b);
         for (int i = 0; i < 7; i++) check_close(b[i], a[i], 1e-11, 1e-11);
         mt_expr_unref(&g);
+        close_stage(&s);
+    }
+}
+
+static void filters_are_real_and_even(void **state) {
+    (void)state;
+    static const int n[2] = {5, 6};
+    for (int wall = 0; wall < 2; wall++) {
+        stage s;
+        mt_symbol *f = NULL;
+        double k[3] = {0.37, -0.11, 0}, v;
+        open_stage(&s, 2, n, walls_of[wall]);
+        assert_int_equal(make_filter(&s, skew, &f), MT_EINPUT);
+        assert_non_null(strstr(s.err.text, "has to be even"));
+        assert_int_equal(make_filter(&s, pole, &f), MT_EINPUT);
+        assert_non_null(strstr(s.err.text, "(0, 0)"));
+        const mt_expr *e = filtered(&s, num(&s, 2)); /* a constant: the value at k = 0 times it */
+        assert_true(mt_expr_is_const(e, 2 * (1 / 0.3 - 0.2)));
+        check_ok(mt_filter_at(s.filter, k, &v, &s.err), &s.err);
+        check_close(v, 1 / (0.3 + 0.37 * 0.37 + 0.5 * 0.11 * 0.11) - 0.2, 1e-15, 0);
         close_stage(&s);
     }
 }
@@ -452,12 +515,19 @@ static void no_leaks(void **state) {
 
 int main(void) {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(equal_means_same),      cmocka_unit_test(text_reads_well),
-        cmocka_unit_test(parities_and_grids),    cmocka_unit_test(every_operator_has_its_derivative),
-        cmocka_unit_test(random_partials),       cmocka_unit_test(variations_are_gradients),
-        cmocka_unit_test(named_variations),      cmocka_unit_test(kernels_agree_with_oracle),
-        cmocka_unit_test(collected_polynomials), cmocka_unit_test(histories),
-        cmocka_unit_test(depth_is_bounded),      cmocka_unit_test(no_leaks),
+        cmocka_unit_test(equal_means_same),
+        cmocka_unit_test(text_reads_well),
+        cmocka_unit_test(parities_and_grids),
+        cmocka_unit_test(every_operator_has_its_derivative),
+        cmocka_unit_test(random_partials),
+        cmocka_unit_test(filters_are_real_and_even),
+        cmocka_unit_test(variations_are_gradients),
+        cmocka_unit_test(named_variations),
+        cmocka_unit_test(kernels_agree_with_oracle),
+        cmocka_unit_test(collected_polynomials),
+        cmocka_unit_test(histories),
+        cmocka_unit_test(depth_is_bounded),
+        cmocka_unit_test(no_leaks),
     };
     return cmocka_run_group_tests_name("expr", tests, NULL, NULL);
 }
