@@ -155,6 +155,72 @@ static int still(lua_State *L) {
     return 0;
 }
 
+/* couple(model, field, other, coefficient); source(model, field, e); keep_mean(model, field) */
+static int couple(lua_State *L) {
+    mt_error err = {0};
+    mt_model *m = model_at(L, 1);
+    mt_field *f = glue_field(L, 2), *other = glue_field(L, 3);
+    glue_check(L, mt_model_couple(m, f, other, glue_expr(L, 4, "mobility"), &err), &err);
+    return 0;
+}
+
+static int source(lua_State *L) {
+    mt_error err = {0};
+    mt_model *m = model_at(L, 1);
+    mt_field *f = glue_field(L, 2);
+    glue_check(L, mt_model_source(m, f, glue_expr(L, 3, "source"), &err), &err);
+    return 0;
+}
+
+static int keep_mean(lua_State *L) {
+    mt_error err = {0};
+    glue_check(L, mt_model_keep_mean(model_at(L, 1), glue_field(L, 2), &err), &err);
+    return 0;
+}
+
+/* carry(model, field, {vx, vy ...}) */
+static int carry(lua_State *L) {
+    mt_error err = {0};
+    mt_model *m = model_at(L, 1);
+    mt_field *f = glue_field(L, 2);
+    const mt_expr *v[3] = {NULL, NULL, NULL};
+    luaL_checktype(L, 3, LUA_TTABLE);
+    for (int a = 0; a < f->grid->dim; a++) {
+        lua_rawgeti(L, 3, a + 1);
+        v[a] = glue_expr(L, lua_gettop(L), "velocity");
+    }
+    glue_check(L, mt_model_carry(m, f, v, &err), &err);
+    return 0;
+}
+
+/* thermal(model, field, seed, stream, amplitude) */
+static int thermal(lua_State *L) {
+    mt_error err = {0};
+    mt_model *m = model_at(L, 1);
+    mt_field *f = glue_field(L, 2);
+    uint64_t seed = (uint64_t)luaL_checkinteger(L, 3);
+    int stream = (int)luaL_checkinteger(L, 4);
+    glue_check(L, mt_model_noise(m, f, seed, stream, glue_expr(L, 5, "thermal noise"), &err), &err);
+    return 0;
+}
+
+/* fluctuations(model, field, means, kT, time, seed, into field) */
+static int fluctuations(lua_State *L) {
+    mt_error err = {0};
+    mt_model *m = model_at(L, 1);
+    mt_field *f = glue_field(L, 2), *into = glue_field(L, 7);
+    size_t n;
+    double *mean = glue_numbers(L, 3, &n);
+    if ((int)n != mt_model_fields(m) || into->grid->cells != f->grid->cells)
+        return glue_fail(L, MT_ESCRIPT,
+                         "fluctuations need a mean for each of the model's fields, and its grid");
+    glue_check(L,
+               mt_model_fluctuations(m, f, mean, luaL_checknumber(L, 4), luaL_checknumber(L, 5),
+                                     (uint64_t)luaL_checkinteger(L, 6), into->values, &err),
+               &err);
+    return 0;
+}
+
 static int potential(lua_State *L) {
     mt_error err = {0};
     const mt_expr *out = NULL;
@@ -180,18 +246,19 @@ static int bytes(lua_State *L) {
     return 1;
 }
 
-/* growth(model, means, {kx, ky, kz}, time) -> rate */
+/* growth(model, means, {kx, ky, kz}, time) -> rate, frequency */
 static int growth(lua_State *L) {
     mt_error err = {0};
     mt_model *m = model_at(L, 1);
     size_t n, nk;
-    double *mean = glue_numbers(L, 2, &n), *k = glue_numbers(L, 3, &nk), rate;
+    double *mean = glue_numbers(L, 2, &n), *k = glue_numbers(L, 3, &nk), rate, swing;
     double wave[3] = {nk > 0 ? k[0] : 0, nk > 1 ? k[1] : 0, nk > 2 ? k[2] : 0};
     if ((int)n != mt_model_fields(m))
         return glue_fail(L, MT_ESCRIPT, "growth needs a mean for each of the model's fields");
-    glue_check(L, mt_model_growth(m, mean, wave, luaL_optnumber(L, 4, 0), &rate, &err), &err);
+    glue_check(L, mt_model_growth(m, mean, wave, luaL_optnumber(L, 4, 0), &rate, &swing, &err), &err);
     lua_pushnumber(L, rate);
-    return 1;
+    lua_pushnumber(L, swing);
+    return 2;
 }
 
 /* --- running
@@ -212,7 +279,9 @@ static int start(lua_State *L) {
     mt_step_options o = {.accuracy = option(L, 2, "accuracy"),
                          .fixed = option(L, 2, "step"),
                          .longest = option(L, 2, "longest")};
-    o.stepper = option(L, 2, "first_order") > 0 ? MT_STEPPER_EULER : MT_STEPPER_SBDF2;
+    static const mt_stepper steppers[] = {MT_STEPPER_SBDF2, MT_STEPPER_EULER, MT_STEPPER_ETDRK2};
+    int method = (int)option(L, 2, "method");
+    o.stepper = steppers[method >= 0 && method < 3 ? method : 0];
     o.free_energy = true;
     glue_check(L, mt_model_start(m, &o, luaL_optnumber(L, 3, 0), &err), &err);
     return 0;
@@ -235,6 +304,9 @@ static void push_state(lua_State *L, const mt_run_state *s) {
         {"mean_drift", s->mean_drift},
         {"log_lowest", s->log_lowest},
         {"log_steps", (double)s->log_steps},
+        {"matrix_lowest", s->matrix_lowest},
+        {"matrix_cell", (double)s->matrix_cell},
+        {"matrix_skew", s->matrix_skew},
     };
     lua_newtable(L);
     for (size_t i = 0; i < sizeof entries / sizeof *entries; i++) {
@@ -300,11 +372,32 @@ static int advance(lua_State *L) {
 
 void glue_open_motion(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"field", new_field}, {"field_name", field_name}, {"field_set", field_set}, {"evaluate", evaluate},
-        {"model", new_model}, {"energy", energy},         {"conserve", conserve},   {"relax", relax},
-        {"evolve", evolve},   {"still", still},           {"potential", potential}, {"describe", describe},
-        {"bytes", bytes},     {"growth", growth},         {"start", start},         {"state", state},
-        {"advance", advance}, {"add_discs", add_discs},   {"random", random_one},   {NULL, NULL},
+        {"field", new_field},
+        {"field_name", field_name},
+        {"field_set", field_set},
+        {"evaluate", evaluate},
+        {"model", new_model},
+        {"energy", energy},
+        {"conserve", conserve},
+        {"relax", relax},
+        {"evolve", evolve},
+        {"still", still},
+        {"potential", potential},
+        {"describe", describe},
+        {"bytes", bytes},
+        {"growth", growth},
+        {"start", start},
+        {"state", state},
+        {"advance", advance},
+        {"add_discs", add_discs},
+        {"random", random_one},
+        {"couple", couple},
+        {"source", source},
+        {"carry", carry},
+        {"keep_mean", keep_mean},
+        {"thermal", thermal},
+        {"fluctuations", fluctuations},
+        {NULL, NULL},
     };
     static const luaL_Reg field_meta[] = {{"__gc", free_field}, {"__close", free_field}, {NULL, NULL}};
     static const luaL_Reg model_meta[] = {{"__gc", free_model}, {"__close", free_model}, {NULL, NULL}};

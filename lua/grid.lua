@@ -103,12 +103,13 @@ end
 function Start.__sub(a, b) return as_start(a) + as_start(b) * -1 end
 function Start.__unm(a) return a * -1 end
 
-local function loader(load) return setmetatable({ parts = { { scale = 1, load = load } }, rest = 0 }, Start) end
+---A start that a function loads into a field: load(field, grid).
+function M.loader(load) return setmetatable({ parts = { { scale = 1, load = load } }, rest = 0 }, Start) end
 
 ---Values from a .npy array beside the script; its shape has to be the grid's.
 function M.from_array(t)
   local o = options.read(t, "from_array", { { "file", "string", required = true } })
-  return loader(function(f)
+  return M.loader(function(f)
     core.read_array(M.folder, o.file, f)
     sources.note(M.folder, o.file)
   end)
@@ -119,7 +120,7 @@ end
 function M.from_image(t)
   local o = options.read(t, "from_image", { { "file", "string", required = true }, { "black", "number", default = 0 },
     { "white", "number", default = 1 }, { "pixel", "positive" } })
-  local s = loader(function(f)
+  local s = M.loader(function(f)
     core.read_image(M.folder, o.file, f, o.pixel)
     sources.note(M.folder, o.file)
   end) * (o.white - o.black)
@@ -186,7 +187,7 @@ function M.place(t)
   end
   formula.seeds[#formula.seeds + 1] = not o.at and o.seed or nil
   o.seed = math.tointeger(o.seed)
-  return loader(function(f, g)
+  return M.loader(function(f, g)
     local width = o.width or 1.5 * g.spacing[1]
     o.gap = o.gap or 2 * width
     local centres = {}
@@ -252,6 +253,16 @@ function Grid:field(name, start)
   M.set(f, start)
   self.fields[#self.fields + 1] = f
   return f
+end
+
+---Cell number (from 0) as the script counts: (3, 14).
+function Grid:cell_text(cell)
+  local list, rest = {}, cell
+  for a = 1, self.dim do
+    list[a] = string.format("%d", rest % self.cells[a] + 1)
+    rest = rest // self.cells[a]
+  end
+  return "(" .. table.concat(list, ", ") .. ")"
 end
 
 ---The grid a formula lives on: of its fields, else the last one made.

@@ -3,6 +3,7 @@ local core = require "core"
 local options = require "options"
 local grids = require "grid"
 local measure = require "measure"
+local motion = require "motion"
 local schedule = require "schedule"
 
 local M = { runner = nil }
@@ -28,7 +29,8 @@ end
 function M.model(t)
   local o = options.read(t or {}, "model", { { "energy", "any" } })
   if o.energy ~= nil and not core.is_expr(o.energy) then
-    core.fail("model: the energy has to be a formula with fields in it, found " .. options.kind(o.energy))
+    core.fail("model: the energy has to be a scalar formula with fields in it, found " .. options.kind(o.energy) ..
+      (options.kind(o.energy) == "vector" and "; write gradsq(c) for |grad c|^2, or dot(a, b)" or ""))
   end
   if o.energy and not core.dim(o.energy) then core.fail("model: the energy contains no field") end
   local m = { energy_density = o.energy or false, moving = {}, still = {}, given = {}, every_hooks = {}, at_hooks = {}, when_hooks = {}, pictures = {},
@@ -44,45 +46,36 @@ function M.model(t)
   return setmetatable(m, Model)
 end
 
-local function own(m, f, what)
-  if core.kind(f) ~= "field" then core.fail(what .. ": expected a field first, found " .. options.kind(f)) end
-  if not m.core then
-    rawset(m, "grid", grids.of[f])
-    rawset(m, "core", core.model(m.grid.core))
-  end
-end
-
----dc/dt = div( mobility grad( dF/dc ) )
+---dc/dt = div( mobility grad( dF/dc ) ) - div( velocity c ) + source. With lists of fields and a matrix of mobilities,
+---dc_i/dt = sum over j of div( M_ij grad( dF/dc_j ) ).
 function Model:conserve(f, t)
   check_self(self, "conserve")
-  local o = options.read(t or {}, "conserve", { { "mobility", "formula", required = true } })
-  own(self, f, "conserve")
-  core.conserve(self.core, f, o.mobility)
-  self.moving[#self.moving + 1], self.given[#self.given + 1] = f, o.mobility
+  motion.declare(self, "conserve", f, t)
 end
 
----dc/dt = -rate dF/dc
+---dc/dt = -rate dF/dc, and so on; keep_mean = true adds what keeps the mean of the field where it is.
 function Model:relax(f, t)
   check_self(self, "relax")
-  local o = options.read(t or {}, "relax", { { "rate", "formula", required = true } })
-  own(self, f, "relax")
-  core.relax(self.core, f, o.rate)
-  self.moving[#self.moving + 1], self.given[#self.given + 1] = f, o.rate
+  motion.declare(self, "relax", f, t)
 end
 
----dc/dt = rhs
-function Model:evolve(f, rhs)
+---dc/dt = rhs, also with velocity, source and keep_mean as options.
+function Model:evolve(f, rhs, t)
   check_self(self, "evolve")
-  own(self, f, "evolve")
+  motion.own(self, f, "evolve")
   if rhs == nil then core.fail("evolve: the right-hand side is missing, as m:evolve(u, laplacian(u) - u^3)") end
+  if not core.is_expr(rhs) and type(rhs) ~= "number" then
+    core.fail("evolve: the right-hand side has to be a formula, found " .. options.kind(rhs) .. (options.kind(rhs) == "vector" and "; take its divergence, as div(v)" or ""))
+  end
   core.evolve(self.core, f, rhs)
   self.moving[#self.moving + 1], self.given[#self.given + 1] = f, rhs
+  motion.more(self, "evolve", { f }, t or {}, {})
 end
 
 ---The derived dF/dc as a formula.
 function Model:potential(f)
   check_self(self, "potential")
-  own(self, f, "potential")
+  motion.own(self, f, "potential")
   return core.potential(self.core, f)
 end
 
@@ -98,6 +91,14 @@ function Model:energy()
   end, require("unit").used and ({ "J/m^2", "J/m", "J" })[self.grid and self.grid.dim or 3] or "")
   if not self.energy_density then core.fail("energy: this model has none") end
   return m
+end
+
+---All fields of the formulas, in the order core knows them.
+function Model:fields()
+  local all = {}
+  for _, f in ipairs(self.moving) do all[#all + 1] = f end
+  for _, f in ipairs(self.still) do all[#all + 1] = f end
+  return all
 end
 
 ---Fields that occur in the formulas but do not move.
@@ -204,18 +205,24 @@ function Model:when(condition, f)
   hook(self, "when", self.when_hooks, condition, f)
 end
 
----m:run{ duration = 2000 } or m:run(schedule{...}); also accuracy, step (fixed), longest, first_order = true
+local methods = { SBDF2 = 0, Euler = 1, ETDRK2 = 2 }
+
+---m:run{ duration = 2000 } or m:run(schedule{...}); also accuracy, step (fixed), longest, method ("SBDF2", "ETDRK2", "Euler")
 function Model:run(t)
   check_self(self, "run")
   if not self.core then core.fail("run: nothing moves yet; declare it with m:conserve, m:relax or m:evolve") end
   local o = { schedule = t }
   if not schedule.is(t) then
     o = options.read(t, "run", { { "duration", "positive" }, { "schedule", "table" }, { "accuracy", "positive" }, { "step", "positive" },
-      { "longest", "positive" }, { "first_order", "boolean", default = false } })
+      { "longest", "positive" }, { "method", "string" } })
+    if o.method and not methods[o.method] then
+      core.fail("run: method has to be \"SBDF2\", \"ETDRK2\" or \"Euler\", found \"" .. o.method .. '"')
+    end
     if (o.duration and 1 or 0) + (o.schedule and 1 or 0) ~= 1 then core.fail("run: say either duration or schedule") end
     if o.schedule and not schedule.is(o.schedule) then core.fail("run: schedule has to be what schedule{...} gave") end
   end
   self:settle()
+  o.method_number = methods[o.method or "SBDF2"]
   M.runner(self, o)
 end
 

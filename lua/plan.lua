@@ -57,10 +57,7 @@ end
 
 local function homogeneous_means(m)
   local means = {}
-  local all = {}
-  for _, f in ipairs(m.moving) do all[#all + 1] = f end
-  for _, f in ipairs(m.still) do all[#all + 1] = f end
-  for i, f in ipairs(all) do means[i] = core.statistics(f).mean end
+  for i, f in ipairs(m:fields()) do means[i] = core.statistics(f).mean end
   return means
 end
 

@@ -10,7 +10,7 @@ local formula = require "formula"
 local report = require "report"
 
 -- What the program says about where things go; filled by cli.
-local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {} }
+local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {}, warnings = {} }
 
 local clock_model
 measure.clock = function()
@@ -272,6 +272,22 @@ local function stops_cleanly(m, f)
   error(message, 0)
 end
 
+-- The energy may rise where a mobility matrix is no matrix of Onsager's kind.
+local function warn_of_matrix(m)
+  local s = core.state(m.core)
+  local function warn(what)
+    M.warnings[#M.warnings + 1] = what
+    core.write(2, "mottle: warning: " .. what .. "\n")
+  end
+  if s.matrix_skew > 1e-9 then
+    warn(string.format("the mobility or rate matrix is not symmetric: elements (i, j) and (j, i) differ by up to %.3g of the largest; the energy need not fall", s.matrix_skew))
+  end
+  if s.matrix_lowest < -1e-9 then
+    warn(string.format("the mobility or rate matrix is not positive: its lowest eigenvalue is %.3g of its largest element in cell %s; the energy may rise there", s.matrix_lowest,
+      m.grid:cell_text(s.matrix_cell)))
+  end
+end
+
 function M.run(m, o)
   if going then core.fail("run: a hook cannot start a run; let it set what the script looks at after the run") end
   inputs.check()
@@ -282,7 +298,8 @@ function M.run(m, o)
   if fresh then
     rawset(m, "drawn", {})
     rawset(m, "stages", {})
-    core.start(m.core, { accuracy = o.accuracy, step = o.step, longest = o.longest, first_order = o.first_order and 1 or 0 }, run.t0)
+    core.start(m.core, { accuracy = o.accuracy, step = o.step, longest = o.longest, method = o.method_number or 0 }, run.t0)
+    warn_of_matrix(m)
     rawset(m, "started", true)
     clock_model = m
     if #m.pictures == 0 and m.grid.dim > 1 then for _, f in ipairs(m.moving) do m:picture { f } end end

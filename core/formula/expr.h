@@ -61,7 +61,7 @@ typedef struct mt_expr {
     const struct mt_expr *arg[3];
     double value;          /* CONST */
     mt_symbol *symbol;     /* FIELD, PARAM, FILTER */
-    int axis;              /* COORD, WAVE, DERIV */
+    int axis;              /* COORD, WAVE, DERIV; NOISE: its stream */
     mt_random_kind random; /* NOISE */
     uint64_t seed;         /* NOISE */
 } mt_expr;
@@ -100,6 +100,9 @@ MT_API mt_status mt_expr_coord(const mt_expr **out, mt_forms *forms, int axis, m
 MT_API mt_status mt_expr_wave(const mt_expr **out, mt_forms *forms, int axis, mt_error *err) MT_MUST_USE;
 MT_API mt_status mt_expr_noise(const mt_expr **out, mt_forms *forms, mt_random_kind kind, uint64_t seed,
                                mt_error *err) MT_MUST_USE;
+/* White noise of an equation: normal numbers that are others in every step (mt_place.step) and stream. */
+MT_API mt_status mt_expr_thermal(const mt_expr **out, mt_forms *forms, uint64_t seed, int stream,
+                                 mt_error *err) MT_MUST_USE;
 /* Any operator with arguments; `axis` only for DERIV, `filter` only for FILTER. Simplifies: constants are
  * folded (only where the result is finite), x+0, x*1, x*0, x-x, x/1, x^1, x^0, -(-x), sign and constants
  * gathered at the front of a product; sums of like terms merged (2 c + 3 c = 5 c) one level deep; DERIV,

@@ -37,7 +37,7 @@ typedef struct mt_place {
     size_t first;          /* row-major number of the first cell: COORD and NOISE depend on it */
     const double *wave[3]; /* for WAVE: n wavenumbers along this axis, or NULL: wave_fixed */
     double wave_fixed[3];
-    const double *filter; /* unused, NULL */
+    uint32_t step; /* of the run, for NOISE: 0 in starting states */
 } mt_place;
 
 /* Passes: fold, share, order, reuse registers, emit, verify. */

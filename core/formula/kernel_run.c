@@ -253,7 +253,10 @@ static void execute(const tile *t, const mt_instruction *x) {
     case MT_CODE_COPY: memcpy(y, array_of(t, x->a[0], 0), t->n * sizeof *y); return;
     case MT_COORD_OP: coordinate(t, x->axis, y); return;
     case MT_WAVE_OP: wave(t, x->axis, y); return;
-    case MT_NOISE_OP: mt_random_fill(x->random, x->seed, t->place->first + t->start, t->n, 0, 0, y); return;
+    case MT_NOISE_OP:
+        mt_random_fill(x->random, x->seed, t->place->first + t->start, t->n, t->place->step,
+                       (uint32_t)x->axis, y);
+        return;
     case MT_WHERE_OP:
         choose(t->n, array_of(t, x->a[0], 0), array_of(t, x->a[1], 1), array_of(t, x->a[2], 2), y);
         return;

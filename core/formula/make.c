@@ -42,6 +42,13 @@ mt_status mt_expr_noise(const mt_expr **out, mt_forms *forms, mt_random_kind kin
     return mt_node(out, forms, &(mt_key){.op = MT_NOISE_OP, .random = kind, .seed = seed}, err);
 }
 
+mt_status mt_expr_thermal(const mt_expr **out, mt_forms *forms, uint64_t seed, int stream, mt_error *err) {
+    MT_REQUIRE(stream > 0, err);
+    return mt_node(out, forms,
+                   &(mt_key){.op = MT_NOISE_OP, .random = MT_RANDOM_NORMAL, .seed = seed, .axis = stream},
+                   err);
+}
+
 /* --- numbers
  * --------------------------------------------------------------------------------------------------------------
  */

@@ -136,7 +136,7 @@ static void note_state(mt_model *m) {
     }
     m->state.log_steps += used;
     for (int i = 0; i < m->n; i++)
-        if (m->mover[i].motion == MT_MOTION_CONSERVE)
+        if (m->mover[i].mean_held)
             m->state.mean_drift = fmax(m->state.mean_drift, fabs(m->mover[i].u[0] - m->mover[i].mean_start));
 }
 
@@ -156,6 +156,7 @@ mt_status mt_model_start(mt_model *m, const mt_step_options *options, double tim
     m->state.log_lowest = INFINITY;
     st = take_values(m, err);
     if (!st) st = check_start(m, err);
+    if (!st) st = mt_model_check_matrices(m, err);
     if (st) return mt_context(err, st, "start");
     note_state(m);
     m->state.log_steps = 0;
@@ -197,10 +198,12 @@ static mt_status judge(const mt_model *m, const mt_attempt *a, bool energy_must_
 /* Falling is a law where nothing drives the system: constant params, no own right-hand sides, no time in the
  * energy. */
 static bool energy_must_fall(const mt_model *m, const mt_attempt *a) {
-    if (!m->energy_known || !m->options.free_energy || (mt_expr_contents(m->energy) & MT_HAS_TIME))
+    if (!m->energy_known || !m->options.free_energy || m->noisy ||
+        (mt_expr_contents(m->energy) & MT_HAS_TIME))
         return false;
     for (int i = 0; i < m->n; i++)
-        if (m->mover[i].motion == MT_MOTION_EVOLVE) return false;
+        if (m->mover[i].motion == MT_MOTION_EVOLVE || m->mover[i].source || m->mover[i].velocity[0])
+            return false;
     for (int i = 0; i < m->params; i++)
         if (m->param[i]->knots &&
             mt_symbol_at(m->param[i], a->time, false) != mt_symbol_at(m->param[i], a->time_next, true))
@@ -258,10 +261,15 @@ static void plan_step(mt_model *m, double stop, mt_attempt *a) {
     a->lands_before_jump = dt == left;
 }
 
+/* Uses the step before: not the exponential Runge-Kutta method. */
+static bool multistep(const mt_model *m) {
+    return !m->noisy && m->options.stepper != MT_STEPPER_ETDRK2;
+}
+
 /* The error of a step relative to the change over it goes with dt^2 (two-step) or dt. A proportional-integral
  * rule (Gustafsson, ACM Trans. Math. Softw. 17 (1991) 533) damps the see-saw of the plain one. */
 static double growth(const mt_model *m, double ratio) {
-    bool second = m->history == MT_HISTORY_STEP && m->options.stepper == MT_STEPPER_SBDF2;
+    bool second = m->history == MT_HISTORY_STEP && multistep(m) && m->options.stepper == MT_STEPPER_SBDF2;
     double order = second ? 2 : 1, old = m->ratio_old > 0 ? m->ratio_old : ratio;
     if (ratio <= 1e-12) return GROWTH_MOST;
     double f = 0.9 * pow(ratio, -0.8 / order) * pow(fmax(old, 1e-12), 0.3 / order);
@@ -277,12 +285,21 @@ static mt_status too_small(mt_model *m, mt_status why, mt_error *err) {
                        "equations may have no "
                        "stable implicit part, or the accuracy asks for more than rounding allows",
                        m->dt_next, m->state.time, m->options.accuracy);
+    if (m->noisy)
+        return mt_context(
+            err, why,
+            "time %.6g, in a step with thermal noise (none is taken back; a run with `longest` "
+            "or `accuracy` smaller takes shorter ones, and cells that are larger see less noise)",
+            m->state.time);
+    if (m->options.fixed > 0)
+        return mt_context(err, why, "time %.6g, in a step of the fixed length %.6g; shorten it",
+                          m->state.time, m->options.fixed);
     return mt_context(err, why, "time %.6g, after %d smaller and smaller steps", m->state.time,
                       REJECTIONS_MOST);
 }
 
 static void rejected(mt_model *m, const mt_attempt *a, bool by_error) {
-    bool was_two_step = m->history == MT_HISTORY_STEP;
+    bool was_two_step = m->history == MT_HISTORY_STEP && multistep(m);
     m->state.rejected++;
     if (m->history != MT_HISTORY_STORED) m->history = MT_HISTORY_STORED;
     double cut = by_error ? fmax(0.1, 0.8 / sqrt(a->ratio)) : 0.25;
@@ -329,7 +346,7 @@ static mt_status step(mt_model *m, double stop, double until, mt_error *err) {
             accepted(m, &a);
             return MT_OK;
         }
-        if (m->options.fixed > 0) break;
+        if (m->options.fixed > 0 || m->noisy) break;
         rejected(m, &a, !a.swept);
     }
     if (err) *err = why;
@@ -347,7 +364,7 @@ static bool values_changed(const mt_model *m) {
 static mt_status pass_knot(mt_model *m, mt_error *err) {
     if (!knot_at(m, m->state.time) || m->history == MT_HISTORY_NONE) return MT_OK;
     m->history = MT_HISTORY_NONE;
-    m->dt_next *= sqrt(m->options.accuracy);
+    if (multistep(m)) m->dt_next *= sqrt(m->options.accuracy);
     m->ratio_old = 0;
     if (!jump_at(m, m->state.time)) return MT_OK;
     mt_status st = mt_step_refresh(m, false, err);

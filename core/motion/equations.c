@@ -1,5 +1,6 @@
 /* From a declared model to a program: potentials, right-hand sides, the implicit part, the energy as
  * reductions. */
+#include "core/motion/column.h"
 #include "core/motion/model_inside.h"
 
 #include <math.h>
@@ -39,31 +40,95 @@ static const mt_expr *conserved(mt_model *m, const mt_expr *mobility, const mt_e
     return sum;
 }
 
-static void derive_mover(mt_model *m, mt_mover *v) {
+static const mt_expr *driven(mt_model *m, const mt_mover *v, const mt_expr *coefficient, const mt_expr *mu) {
     mt_builder *b = builder(m);
-    v->node = mt_build_symbol(b, v->field->symbol);
+    if (v->motion == MT_MOTION_CONSERVE) return conserved(m, coefficient, mu);
+    return mt_build_neg(b, mt_build_mul(b, coefficient, mu));
+}
+
+static const mt_expr *carried(mt_model *m, const mt_mover *v) {
+    mt_builder *b = builder(m);
+    const mt_expr *sum = mt_build_number(b, 0);
+    for (int a = 0; a < m->grid->dim && v->velocity[0]; a++)
+        sum = mt_build_sub(b, sum, mt_build_deriv(b, a, mt_build_mul(b, v->velocity[a], v->node)));
+    return sum;
+}
+
+static void derive_potential(mt_model *m, mt_mover *v) {
+    v->node = mt_build_symbol(builder(m), v->field->symbol);
     if (v->motion == MT_MOTION_CONSERVE || v->motion == MT_MOTION_RELAX) v->potential = potential(m, v->node);
-    if (v->motion == MT_MOTION_CONSERVE)
-        v->rhs = conserved(m, v->given, v->potential);
-    else if (v->motion == MT_MOTION_RELAX)
-        v->rhs = mt_build_neg(b, mt_build_mul(b, v->given, v->potential));
-    else if (v->motion == MT_MOTION_EVOLVE)
-        v->rhs = v->given;
-    else
+}
+
+static void derive_rhs(mt_model *m, mt_mover *v) {
+    mt_builder *b = builder(m);
+    v->mean_held = (v->motion == MT_MOTION_CONSERVE && !v->source) || v->keeps_mean;
+    if (v->motion == MT_MOTION_STILL) {
         v->rhs = mt_build_number(b, 0);
+        return;
+    }
+    v->rhs = v->motion == MT_MOTION_EVOLVE ? v->given : driven(m, v, v->given, v->potential);
+    for (int j = 0; j < v->couplings; j++)
+        v->rhs = mt_build_add(b, v->rhs,
+                              driven(m, v, v->coupling[j].given, m->mover[v->coupling[j].other].potential));
+    if (v->source) v->rhs = mt_build_add(b, v->rhs, v->source);
+    if (v->velocity[0]) v->rhs = mt_build_add(b, v->rhs, carried(m, v));
+}
+
+/* --- thermal noise
+ * ------------------------------------------------------------------------------------------------------ */
+
+static const mt_expr *thermal_node(mt_model *m, const mt_thermal *t, int part) {
+    mt_builder *b = builder(m);
+    const mt_expr *e = NULL;
+    if (b->status != MT_OK) return NULL;
+    mt_status st = mt_expr_thermal(&e, m->forms, t->seed, 4 * t->stream + part, b->err);
+    return mt_build_keep(b, st, e);
+}
+
+static void add_thermal(mt_model *m, mt_mover *v, const mt_expr *e, mt_parities parity, mt_term term) {
+    int point = 0;
+    if (!e || !term.factor || mt_split_point(&m->program.split, e, parity, &point) != MT_OK) return;
+    term.source = ~point;
+    (void)!mt_sum_add(builder(m), &v->noise_sum, term);
+}
+
+/* With an amplitude that is the same everywhere, the divergence of a vector of independent noises has the
+ * statistics of one noise times |k|: one transform instead of one per axis. Along a mirror axis the flux is
+ * odd about the wall: the sine transform of white noise. */
+static void derive_noise(mt_model *m, mt_mover *v) {
+    mt_builder *b = builder(m);
+    for (int i = 0; i < v->noises; i++) {
+        const mt_thermal *t = &v->noise[i];
+        bool flux = v->motion == MT_MOTION_CONSERVE;
+        if (mt_expr_uniform(t->amplitude)) {
+            const mt_expr *factor = t->amplitude;
+            if (flux)
+                factor = mt_build_mul(b, factor,
+                                      mt_build_unary(b, MT_SQRT_OP, mt_build_wave_squared(b, m->grid->dim)));
+            add_thermal(m, v, thermal_node(m, t, 0), 0, (mt_term){.factor = factor});
+            continue;
+        }
+        for (int a = 0; a < (flux ? m->grid->dim : 1); a++) {
+            bool mirror = flux && m->grid->wall[a] == MT_MIRROR, turned = flux && !mirror;
+            const mt_expr *factor = flux ? mt_build_wave(b, a) : mt_build_number(b, 1);
+            add_thermal(m, v, mt_build_mul(b, t->amplitude, thermal_node(m, t, 1 + a)), mirror ? 1u << a : 0,
+                        (mt_term){.factor = factor, .turns = turned});
+        }
+    }
+    m->noisy = m->noisy || v->noises > 0;
 }
 
 /* --- implicit part
  * ------------------------------------------------------------------------------------------------------ */
 
-/* Own linear terms with real factors. */
-static const mt_expr *own_linear(mt_model *m, int number) {
+/* Linear terms of mover `number` in field `source` with real factors. */
+static const mt_expr *linear_in(mt_model *m, int number, int source) {
     mt_builder *b = builder(m);
     const mt_sum *sum = &m->mover[number].sum;
     const mt_expr *l = mt_build_number(b, 0);
     for (int i = 0; i < sum->n; i++) {
         const mt_term *t = &sum->term[i];
-        if (t->source != number || t->turns % 2) continue;
+        if (t->source != source || t->turns % 2) continue;
         l = t->turns == 0 ? mt_build_add(b, l, t->factor) : mt_build_sub(b, l, t->factor);
     }
     return l;
@@ -107,6 +172,35 @@ static void derive_implicit(mt_model *m, mt_mover *v) {
     }
     mt_stiff_end(&stiff);
     v->implicit = mt_build_binary(b, MT_MIN_OP, zero, sum);
+}
+
+/* A mobility matrix M(x) that varies is dominated by n times its diagonal (n x n, positive semi-definite: the
+ * largest eigenvalue is at most the trace). */
+static double needed_theta(const mt_mover *v) {
+    bool varies = !mt_expr_uniform(v->given ? v->given : v->node);
+    for (int j = 0; j < v->couplings; j++) varies = varies || !mt_expr_uniform(v->coupling[j].given);
+    return varies ? 1 + v->couplings : 1;
+}
+
+/* Two fields whose equations contain each other linearly are solved in one block per mode. Where the block is
+ * not stable by itself (one of its eigenvalues would be positive) its cross terms are left to the explicit
+ * part: those are long waves, which grow slowly. */
+static void pair_up(mt_model *m) {
+    mt_builder *b = builder(m);
+    for (int i = 0; i < m->n; i++)
+        for (int j = i + 1; j < m->n && status(m) == MT_OK; j++) {
+            mt_mover *v = &m->mover[i], *w = &m->mover[j];
+            if (v->partner >= 0 || w->partner >= 0 || v->motion == MT_MOTION_STILL ||
+                w->motion == MT_MOTION_STILL)
+                continue;
+            const mt_expr *x = linear_in(m, i, j), *y = linear_in(m, j, i);
+            if (!x || !y || mt_expr_is_const(x, 0) || mt_expr_is_const(y, 0)) continue;
+            const mt_expr *both = mt_build_mul(b, v->implicit, w->implicit), *zero = mt_build_number(b, 0);
+            const mt_expr *stable = mt_build_binary(b, MT_ABOVE_OP, both, mt_build_mul(b, x, y));
+            v->cross = mt_build_mul(b, stable, x), w->cross = mt_build_mul(b, stable, y);
+            if (!zero || !v->cross || !w->cross) return;
+            v->partner = j, w->partner = i;
+        }
 }
 
 /* --- energy
@@ -280,10 +374,10 @@ static int wanted_factor(mt_model *m, const mt_expr *e) {
 
 static mt_status make_program(mt_model *m) {
     mt_program *p = &m->program;
-    mt_sum *sums = mt_alloc((size_t)m->n + 1, sizeof *sums);
+    mt_sum *sums = mt_alloc(2 * (size_t)m->n + 1, sizeof *sums);
     if (!sums) return mt_fail(builder(m)->err, MT_ENOMEM, "no memory for the equations");
-    for (int i = 0; i < m->n; i++) sums[i] = m->mover[i].sum;
-    mt_status st = mt_program_finish(p, m->n, sums);
+    for (int i = 0; i < m->n; i++) sums[i] = m->mover[i].sum, sums[m->n + i] = m->mover[i].noise_sum;
+    mt_status st = mt_program_finish(p, 2 * m->n, sums);
     mt_free(sums);
     if (st) return st;
     m->linear_factors.e = mt_alloc((size_t)m->n + 1, sizeof *m->linear_factors.e);
@@ -292,6 +386,7 @@ static mt_status make_program(mt_model *m) {
         mt_mover *v = &m->mover[i];
         v->linear_factor = wanted_factor(m, v->linear);
         v->implicit_factor = wanted_factor(m, v->implicit);
+        v->cross_factor = wanted_factor(m, v->cross);
         m->linear_factors.e[m->linear_factors.n++] = v->linear;
     }
     for (int i = 0; i < m->quadratics; i++) m->quadratic[i].factor = wanted_factor(m, m->quadratic[i].q);
@@ -299,17 +394,15 @@ static mt_status make_program(mt_model *m) {
     st = mt_program_compile(p);
     if (!st) st = mt_program_compile_factors(p, &m->linear_factors);
     if (st) return st;
-    /* per worker: R of each field, L, Lambda, weights, one term line (twice the length each), L in mid-step
-     * and its scratch */
-    size_t line = mt_round_up(2 * (size_t)p->spectrum->length, 8);
-    m->column_doubles =
-        ((size_t)m->n + 6) * line + (size_t)m->n * line + mt_kernel_scratch(m->linear_factors.kernel);
+    m->column_doubles = mt_column_doubles(m);
     return MT_OK;
 }
 
 static mt_status derive(mt_model *m) {
     mt_split *s = &m->program.split;
-    for (int i = 0; i < m->n; i++) derive_mover(m, &m->mover[i]);
+    m->noisy = false;
+    for (int i = 0; i < m->n; i++) derive_potential(m, &m->mover[i]);
+    for (int i = 0; i < m->n; i++) derive_rhs(m, &m->mover[i]);
     derive_energy(m);
     for (int i = 0; i < m->n && status(m) == MT_OK; i++) {
         mt_mover *v = &m->mover[i];
@@ -322,12 +415,16 @@ static mt_status derive(mt_model *m) {
                                "field even; "
                                "first derivatives have to come in pairs there (or make that axis periodic)",
                                v->field->symbol->name);
-        v->linear = mt_build_collect(builder(m), own_linear(m, i));
+        v->linear = mt_build_collect(builder(m), linear_in(m, i, i));
+        v->partner = -1, v->cross = NULL, v->theta = needed_theta(v);
         derive_implicit(m, v);
+        derive_noise(m, v);
         guard_mover(m, v);
         guard_logs(m, v->rhs);
         find_params(m, v->rhs);
+        for (int j = 0; j < v->noises; j++) find_params(m, v->noise[j].amplitude);
     }
+    pair_up(m);
     guard_logs(m, m->energy);
     find_params(m, m->energy);
     return status(m) ? status(m) : make_program(m);
@@ -354,7 +451,7 @@ mt_status mt_model_derive(mt_model *m, mt_error *err) {
 void mt_model_forget(mt_model *m) {
     for (int i = 0; i < m->n; i++) {
         mt_mover *v = &m->mover[i];
-        mt_sum_end(&v->sum);
+        mt_sum_end(&v->sum), mt_sum_end(&v->noise_sum);
         for (int j = 0; j < v->dominates; j++) mt_symbol_unref(&v->dominate[j].scale);
         mt_free(v->dominate), mt_free(v->u), mt_free(v->um), mt_free(v->r);
         v->dominate = NULL, v->dominates = 0;

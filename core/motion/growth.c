@@ -3,9 +3,9 @@
  * unit amplitude in one field. Spectral operators multiply the response by their symbol (d/dx by i k_x ...).
  * This works for every equation the language can express. Cahn (Acta Metall. 9 (1961) 795) for div(M grad(f'
  * - kappa lap c)): R = -M k^2 (f'' + kappa k^2). */
-#include "core/motion/model_inside.h"
+#include "core/motion/waves.h"
 
-#include <complex.h>
+#include <lapacke.h>
 #include <math.h>
 #include <string.h>
 
@@ -13,8 +13,8 @@
 #include "core/formula/filter.h"
 
 typedef struct dual {
-    double v;         /* value in the homogeneous state */
-    double complex d; /* response to the wave */
+    double v;     /* value in the homogeneous state */
+    mt_complex d; /* response to the wave */
 } dual;
 
 typedef struct memo {
@@ -53,7 +53,7 @@ static dual leaf(walk *w, const mt_expr *e) {
 
 static dual power(dual a, dual b) {
     double v = pow(a.v, b.v);
-    double complex d = b.v == 0 ? 0 : b.v * pow(a.v, b.v - 1) * a.d;
+    mt_complex d = b.v == 0 ? 0 : b.v * pow(a.v, b.v - 1) * a.d;
     if (b.d != 0) d += v * log(a.v) * b.d;
     return (dual){v, d};
 }
@@ -144,33 +144,69 @@ static dual respond(walk *w, const mt_expr *e) {
     return x;
 }
 
-/* Larger real part of the eigenvalues of a 2 x 2 matrix. */
-static double largest_of_two(double complex a[2][2]) {
-    double complex half = (a[0][0] + a[1][1]) / 2, det = a[0][0] * a[1][1] - a[0][1] * a[1][0];
-    double complex root = csqrt(half * half - det);
-    return fmax(creal(half + root), creal(half - root));
+mt_status mt_wave_matrix(const mt_waves *x, const double k[3], mt_complex *a, mt_error *err) {
+    walk w = {.m = x->m, .mean = x->mean, .k = k, .time = x->time, .err = err};
+    for (int j = 0; j < x->n && !w.status; j++) {
+        w.wrt = x->field[j];
+        w.n = 0;
+        for (int i = 0; i < x->n && !w.status; i++) a[i * x->n + j] = respond(&w, x->row[i]).d;
+    }
+    mt_free(w.seen);
+    for (int i = 0; i < x->n * x->n && !w.status; i++)
+        if (!isfinite(creal(a[i])) || !isfinite(cimag(a[i])))
+            return mt_fail(err, MT_ENUMERIC, "the linearised equations are not finite at this state");
+    return w.status;
+}
+
+mt_status mt_waves_begin(mt_waves *x, mt_model *m, bool potentials, const double mean[], double time,
+                         mt_error *err) {
+    memset(x, 0, sizeof *x);
+    mt_status st = mt_model_derive(m, err);
+    if (st) return st;
+    x->m = m, x->mean = mean, x->time = time;
+    x->field = mt_alloc((size_t)m->n, sizeof *x->field), x->row = mt_alloc((size_t)m->n, sizeof *x->row);
+    if (!x->field || !x->row) {
+        mt_waves_end(x);
+        return mt_fail(err, MT_ENOMEM, "no memory for the growth of waves");
+    }
+    for (int i = 0; i < m->n; i++) {
+        const mt_expr *e = potentials ? m->mover[i].potential : m->mover[i].rhs;
+        if (m->mover[i].motion == MT_MOTION_STILL || !e) continue;
+        x->field[x->n] = i;
+        x->row[x->n++] = e;
+    }
+    mt_step_params(m, time, false);
+    return MT_OK;
+}
+
+void mt_waves_end(mt_waves *x) {
+    mt_free(x->field), mt_free(x->row);
+    memset(x, 0, sizeof *x);
+}
+
+/* The eigenvalue of the largest real part, by LAPACK; a is destroyed. */
+static mt_status fastest(int n, mt_complex *a, mt_complex *w, double *rate, double *frequency,
+                         mt_error *err) {
+    if (n == 1)
+        w[0] = a[0];
+    else if (LAPACKE_zgeev(LAPACK_ROW_MAJOR, 'N', 'N', n, a, n, w, NULL, n, NULL, n) != 0)
+        return mt_fail(err, MT_ENUMERIC, "the growth rates of waves did not converge");
+    for (int i = 0; i < n; i++)
+        if (i == 0 || creal(w[i]) > *rate) *rate = creal(w[i]), *frequency = fabs(cimag(w[i]));
+    return MT_OK;
 }
 
 mt_status mt_model_growth(mt_model *m, const double mean[], const double k[3], double time, double *rate,
-                          mt_error *err) {
-    double complex a[2][2] = {{0, 0}, {0, 0}};
-    int moving[2], n = 0;
-    mt_status st = mt_model_derive(m, err);
-    *rate = 0;
+                          double *frequency, mt_error *err) {
+    mt_waves x;
+    *rate = *frequency = 0;
+    mt_status st = mt_waves_begin(&x, m, false, mean, time, err);
     if (st) return st;
-    for (int i = 0; i < m->n; i++) {
-        if (m->mover[i].motion == MT_MOTION_STILL) continue;
-        if (n == 2) return mt_fail(err, MT_EUNSUPPORTED, "growth of waves with more than two moving fields");
-        moving[n++] = i;
-    }
-    walk w = {.m = m, .mean = mean, .k = k, .time = time, .err = err};
-    mt_step_params(m, time, false);
-    for (int j = 0; j < n; j++) {
-        w.wrt = moving[j];
-        w.n = 0;
-        for (int i = 0; i < n && !w.status; i++) a[i][j] = respond(&w, m->mover[moving[i]].rhs).d;
-    }
-    mt_free(w.seen);
-    *rate = n == 1 ? creal(a[0][0]) : largest_of_two(a);
-    return w.status;
+    mt_complex *a = mt_alloc((size_t)(x.n * x.n), sizeof *a), *w = mt_alloc((size_t)x.n, sizeof *w);
+    if (!a || !w) st = mt_fail(err, MT_ENOMEM, "no memory for the growth of waves");
+    if (!st) st = mt_wave_matrix(&x, k, a, err);
+    if (!st) st = fastest(x.n, a, w, rate, frequency, err);
+    mt_free(a), mt_free(w);
+    mt_waves_end(&x);
+    return st;
 }

@@ -19,15 +19,21 @@ mt_status mt_model_new(mt_model **out, mt_forms *forms, mt_grid *grid, mt_pool *
     return st;
 }
 
+static void free_mover(mt_mover *v) {
+    mt_expr_unref(&v->given), mt_expr_unref(&v->source);
+    for (int a = 0; a < 3; a++) mt_expr_unref(&v->velocity[a]);
+    for (int i = 0; i < v->couplings; i++) mt_expr_unref(&v->coupling[i].given);
+    for (int i = 0; i < v->noises; i++) mt_expr_unref(&v->noise[i].amplitude);
+    mt_free(v->coupling), mt_free(v->noise);
+    mt_field_unref(&v->field);
+}
+
 void mt_model_free(mt_model **model) {
     mt_model *m = *model;
     *model = NULL;
     if (!m) return;
     mt_model_forget(m);
-    for (int i = 0; i < m->n; i++) {
-        mt_expr_unref(&m->mover[i].given);
-        mt_field_unref(&m->mover[i].field);
-    }
+    for (int i = 0; i < m->n; i++) free_mover(&m->mover[i]);
     mt_free(m->mover);
     mt_expr_unref(&m->energy);
     mt_sweeper_free(&m->sweeper);
@@ -131,6 +137,98 @@ mt_status mt_model_evolve(mt_model *m, mt_field *field, const mt_expr *rhs, mt_e
 mt_status mt_model_still(mt_model *m, mt_field *field, mt_error *err) {
     mt_status st = declare(m, field, MT_MOTION_STILL, NULL, err);
     return st ? mt_context(err, st, "field '%s'", field->symbol->name) : st;
+}
+
+/* --- more terms
+ * ------------------------------------------------------------------------------------------------------- */
+
+static mt_status find_mover(mt_model *m, const mt_field *field, int *number, mt_error *err) {
+    for (int i = 0; i < m->n; i++)
+        if (m->mover[i].field == field && m->mover[i].motion != MT_MOTION_STILL) {
+            *number = i;
+            return MT_OK;
+        }
+    return mt_fail(err, MT_EINPUT, "field '%s': say first how it moves (conserve, relax or evolve)",
+                   field->symbol->name);
+}
+
+mt_status mt_model_couple(mt_model *m, const mt_field *field, const mt_field *other,
+                          const mt_expr *coefficient, mt_error *err) {
+    int i = 0, j = 0;
+    mt_status st = find_mover(m, field, &i, err);
+    if (!st) st = find_mover(m, other, &j, err);
+    if (!st) st = check_formula(m, coefficient, err);
+    if (st) return mt_context(err, st, "field '%s'", field->symbol->name);
+    mt_mover *v = &m->mover[i];
+    MT_REQUIRE(i != j, err);
+    if (v->motion != m->mover[j].motion || v->motion == MT_MOTION_EVOLVE)
+        return mt_fail(err, MT_EINPUT,
+                       "fields '%s' and '%s': a matrix couples fields that are both conserved "
+                       "or both relaxing",
+                       field->symbol->name, other->symbol->name);
+    mt_coupling *more = mt_resize(v->coupling, (size_t)v->couplings + 1, sizeof *more);
+    if (!more) return mt_fail(err, MT_ENOMEM, "no memory for a coupling");
+    mt_model_forget(m);
+    v->coupling = more;
+    v->coupling[v->couplings++] = (mt_coupling){j, mt_expr_ref(coefficient)};
+    return MT_OK;
+}
+
+mt_status mt_model_source(mt_model *m, const mt_field *field, const mt_expr *source, mt_error *err) {
+    int i = 0;
+    mt_status st = find_mover(m, field, &i, err);
+    if (!st) st = check_formula(m, source, err);
+    if (st) return mt_context(err, st, "source of field '%s'", field->symbol->name);
+    mt_model_forget(m);
+    mt_expr_unref(&m->mover[i].source);
+    m->mover[i].source = mt_expr_ref(source);
+    return MT_OK;
+}
+
+mt_status mt_model_carry(mt_model *m, const mt_field *field, const mt_expr *const velocity[], mt_error *err) {
+    int i = 0;
+    mt_status st = find_mover(m, field, &i, err);
+    for (int a = 0; a < m->grid->dim && !st; a++) st = check_formula(m, velocity[a], err);
+    if (st) return mt_context(err, st, "velocity of field '%s'", field->symbol->name);
+    mt_model_forget(m);
+    for (int a = 0; a < m->grid->dim; a++) {
+        mt_expr_unref(&m->mover[i].velocity[a]);
+        m->mover[i].velocity[a] = mt_expr_ref(velocity[a]);
+    }
+    return MT_OK;
+}
+
+mt_status mt_model_keep_mean(mt_model *m, const mt_field *field, mt_error *err) {
+    int i = 0;
+    mt_status st = find_mover(m, field, &i, err);
+    if (st) return st;
+    if (m->mover[i].motion != MT_MOTION_RELAX || !mt_expr_uniform(m->mover[i].given))
+        return mt_fail(
+            err, MT_EINPUT,
+            "field '%s': its mean can be kept where the field relaxes with a rate that is the same "
+            "in every cell (a conserved field keeps its mean anyway)",
+            field->symbol->name);
+    mt_model_forget(m);
+    m->mover[i].keeps_mean = true;
+    return MT_OK;
+}
+
+mt_status mt_model_noise(mt_model *m, const mt_field *field, uint64_t seed, int stream,
+                         const mt_expr *amplitude, mt_error *err) {
+    int i = 0;
+    mt_status st = find_mover(m, field, &i, err);
+    if (!st) st = check_formula(m, amplitude, err);
+    if (st) return mt_context(err, st, "thermal noise of field '%s'", field->symbol->name);
+    if (mt_expr_contents(amplitude) & MT_HAS_SPECTRAL)
+        return mt_fail(err, MT_EUNSUPPORTED, "thermal noise of field '%s': its mobility contains derivatives",
+                       field->symbol->name);
+    mt_mover *v = &m->mover[i];
+    mt_thermal *more = mt_resize(v->noise, (size_t)v->noises + 1, sizeof *more);
+    if (!more) return mt_fail(err, MT_ENOMEM, "no memory for thermal noise");
+    mt_model_forget(m);
+    v->noise = more;
+    v->noise[v->noises++] = (mt_thermal){seed, stream, mt_expr_ref(amplitude)};
+    return MT_OK;
 }
 
 mt_status mt_model_potential(mt_model *m, const mt_field *field, const mt_expr **out, mt_error *err) {

@@ -21,16 +21,40 @@ typedef struct mt_dominate {
     const mt_expr *o;
 } mt_dominate;
 
+/* An off-diagonal element of the mobility or rate matrix. */
+typedef struct mt_coupling {
+    int other;            /* number of the mover whose potential drives */
+    const mt_expr *given; /* owned */
+} mt_coupling;
+
+typedef struct mt_thermal {
+    uint64_t seed;
+    int stream;
+    const mt_expr *amplitude; /* owned */
+} mt_thermal;
+
 typedef struct mt_mover {
     mt_field *field;
     mt_motion motion;
     const mt_expr *given; /* mobility, rate or right-hand side; owned */
+    int couplings;
+    mt_coupling *coupling;
+    const mt_expr *source, *velocity[3]; /* owned, or NULL */
+    bool keeps_mean;
+    int noises;
+    mt_thermal *noise;
     /* derived (kept by the program's builder) */
     const mt_expr *node, *potential, *rhs;
     mt_sum sum;
     const mt_expr *linear;              /* L(k): own linear terms */
     const mt_expr *implicit;            /* Lambda(k) <= 0: the part taken implicitly */
     int linear_factor, implicit_factor; /* in the last column sweep; -1: constant 1, -2: constant 0 */
+    int partner;                        /* mover solved in one block with this one, or -1 */
+    const mt_expr *cross;               /* what the partner's spectrum is multiplied by, implicitly */
+    int cross_factor;
+    mt_sum noise_sum; /* of the thermal noise, before the root of the step */
+    double theta;     /* by how much more than needed for one field the varying coefficients are dominated */
+    bool mean_held;   /* mode 0 is copied, not computed */
     int dominates;
     mt_dominate *dominate;
     int mobility_reduction; /* min of the mobility or rate; -1 if it is uniform */
@@ -68,6 +92,7 @@ struct mt_model {
     mt_program program;
     int quadratics;
     mt_quadratic *quadratic;
+    bool noisy;                 /* some field has thermal noise */
     const mt_expr *energy_rest; /* cell-wise part of the energy, or NULL */
     int energy_reduction;       /* -1: none */
     bool energy_known;          /* energy = reduction + quadratics */
@@ -97,6 +122,9 @@ mt_status mt_model_derive(mt_model *m,
                           mt_error *err); /* potentials, right-hand sides, split, program; idempotent */
 void mt_model_forget(mt_model *m);        /* undoes derive and start */
 
+/* matrix.c: what state says of mobility and rate matrices, at the fields' present values */
+mt_status mt_model_check_matrices(mt_model *m, mt_error *err);
+
 /* step.c: one attempt from state.time to time_next. Leaves u+ in um (swapped in by mt_step_accept). */
 typedef struct mt_attempt {
     double time, dt, time_next;
@@ -107,11 +135,22 @@ typedef struct mt_attempt {
     bool swept;   /* stage 0 was evaluated at u+ */
 } mt_attempt;
 mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err);
+mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err); /* exponential.c */
 void mt_step_accept(mt_model *m);
 mt_status mt_step_refresh(mt_model *m, bool capture,
                           mt_error *err);         /* stage 0 of the present u at state.time */
 double mt_step_fastest(mt_model *m, double time); /* max over modes and fields of |L|, |Lambda| */
 double mt_step_energy(const mt_model *m);         /* from the last stage-0 sweep and quadratic tallies */
 void mt_step_params(mt_model *m, double time, bool before_jump);
+
+/* what both steppers are made of: the last column sweep (fresh: with what the rows left), stage 0 with the
+ * fields' values if wanted, the stages after it, the size of the error, the dominance of varying coefficients
+ */
+mt_status mt_step_columns(mt_model *m, bool fresh, mt_column_body body, void *ctx, double time,
+                          mt_error *err);
+mt_status mt_step_rows(mt_model *m, double time, bool capture, mt_error *err);
+mt_status mt_step_later_stages(mt_model *m, double time, mt_error *err);
+double mt_step_error_ratio(const mt_model *m, double accuracy);
+void mt_step_dominate(mt_model *m, double theta);
 
 #endif

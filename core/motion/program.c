@@ -315,7 +315,7 @@ static mt_status row_body(void *ctx, const mt_unit *unit, double *const in[], do
     rows_ctx *r = ctx;
     mt_program *p = r->p;
     mt_stage *t = &p->stage[r->stage];
-    mt_place place = {.grid = p->split.grid, .first = unit->first};
+    mt_place place = {.grid = p->split.grid, .first = unit->first, .step = p->step};
     double *outs[MOST_LEAVES];
     double *const *to = out;
     (void)err;

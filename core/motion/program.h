@@ -50,6 +50,7 @@ typedef struct mt_program {
     size_t column_doubles; /* the stepper's part of a worker's scratch */
     double **scratch;      /* [workers]: the stepper's part, then factor lines, then the kernel's */
     double time;           /* of the sweep under way */
+    uint32_t step;         /* of the run, for thermal noise */
 } mt_program;
 
 /* Use: begin (as mt_split_begin; the sweeper's grid), then mt_split_sum / mt_split_needs on p->split,

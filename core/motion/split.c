@@ -202,23 +202,42 @@ static void walk(gather *g, const mt_expr *e, const mt_expr *scale, const mt_exp
     add_part(g, mt_build_mul(b, scale, e), factor, turns);
 }
 
+mt_status mt_split_point(mt_split *s, const mt_expr *e, mt_parities parity, int *number) {
+    mt_point p = {.e = e, .parity = parity};
+    *number = 0;
+    if (mt_split_needs(s, e, &p.stage) != MT_OK) return s->build.status;
+    for (int i = 0; i < s->points; i++)
+        if (s->point[i].e == e && s->point[i].parity == parity) {
+            *number = i;
+            return MT_OK;
+        }
+    if (!mt_build_grow(&s->build, &s->point, s->points, &s->point_room, sizeof *s->point))
+        return s->build.status;
+    p.last_sweep = p.stage;
+    *number = s->points;
+    s->point[s->points++] = p;
+    return MT_OK;
+}
+
 static int add_point(mt_split *s, const mt_expr *e) {
     mt_builder *b = &s->build;
+    mt_parities parity = 0;
+    int number = 0;
     e = mt_build_collect(b, e);
     if (!e) return 0;
-    for (int i = 0; i < s->points; i++)
-        if (s->point[i].e == e) return i;
-    mt_point p = {.e = e};
-    mt_status st = mt_expr_parity(e, s->grid, &p.parity, b->err);
-    if (st != MT_OK) {
+    mt_status st = mt_expr_parity(e, s->grid, &parity, b->err);
+    if (st != MT_OK)
         b->status = st;
-        return 0;
-    }
-    if (mt_split_needs(s, e, &p.stage) != MT_OK) return 0;
-    if (!mt_build_grow(b, &s->point, s->points, &s->point_room, sizeof *s->point)) return 0;
-    p.last_sweep = p.stage;
-    s->point[s->points] = p;
-    return s->points++;
+    else
+        (void)!mt_split_point(s, e, parity, &number);
+    return number;
+}
+
+mt_status mt_sum_add(mt_builder *b, mt_sum *sum, mt_term term) {
+    if (b->status == MT_OK && term.factor &&
+        mt_build_grow(b, &sum->term, sum->n, &sum->room, sizeof *sum->term))
+        sum->term[sum->n++] = term;
+    return b->status;
 }
 
 mt_status mt_split_sum(mt_split *s, const mt_expr *e, mt_sum *sum) {
@@ -231,8 +250,7 @@ mt_status mt_split_sum(mt_split *s, const mt_expr *e, mt_sum *sum) {
     walk(&g, e, one, one, 0);
     for (int i = 0; i < g.n && b->status == MT_OK; i++) {
         int point = add_point(s, g.part[i].e);
-        if (!mt_build_grow(b, &sum->term, sum->n, &sum->room, sizeof *sum->term)) break;
-        sum->term[sum->n++] = (mt_term){g.part[i].factor, g.part[i].turns, ~point};
+        (void)!mt_sum_add(b, sum, (mt_term){g.part[i].factor, g.part[i].turns, ~point});
     }
     mt_free(g.part);
     if (b->status != MT_OK) mt_sum_end(sum);

@@ -59,6 +59,12 @@ mt_status mt_split_sum(mt_split *s, const mt_expr *e, mt_sum *sum);
 /* Registers what the cell-wise expression e needs; level: the stage at which it can be computed. */
 mt_status mt_split_needs(mt_split *s, const mt_expr *e, int *level);
 
+/* Registers a point of given parity that is not derived from its formula: white noise fits either. */
+mt_status mt_split_point(mt_split *s, const mt_expr *e, mt_parities parity, int *number);
+
+/* sum += factor i^turns FT[source]. */
+mt_status mt_sum_add(mt_builder *b, mt_sum *sum, mt_term term);
+
 /* Number of the quantity that holds `node`, or -1. */
 int mt_split_find(const mt_split *s, const mt_expr *node);
 
