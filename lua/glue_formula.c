@@ -250,6 +250,15 @@ static int dim(lua_State *L) {
 static int partial(lua_State *L) {
     mt_error err = {0};
     const mt_expr *out = NULL, *e = glue_expr(L, 1, "derivative"), *wrt = glue_expr(L, 2, "derivative");
+    char what[200];
+    if (wrt->op != MT_FIELD_OP && wrt->op != MT_PARAM_OP && wrt->op != MT_COORD_OP && wrt->op != MT_TIME_OP &&
+        wrt->op != MT_GRADSQ_OP && !mt_op_spectral(wrt->op)) {
+        mt_expr_print(wrt, what, sizeof what);
+        return glue_fail(L, MT_ESCRIPT,
+                         "derivative: there is none with respect to '%s'; it is taken by a field, a param, a "
+                         "coordinate, time, or a derivative such as gradsq(c), dx(c), laplacian(c)",
+                         what);
+    }
     glue_check(L, mt_expr_partial(&out, e, wrt, &err), &err);
     glue_push_expr(L, out);
     return 1;

@@ -157,6 +157,7 @@ mt_status mt_model_start(mt_model *m, const mt_step_options *options, double tim
     st = take_values(m, err);
     if (!st) st = check_start(m, err);
     if (!st) st = mt_model_check_matrices(m, err);
+    if (!st) st = mt_model_check_posed(m, err);
     if (st) return mt_context(err, st, "start");
     note_state(m);
     m->state.log_steps = 0;

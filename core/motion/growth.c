@@ -184,29 +184,85 @@ void mt_waves_end(mt_waves *x) {
     memset(x, 0, sizeof *x);
 }
 
+typedef struct rates {
+    double rate, frequency; /* of the eigenvalue with the largest real part */
+    double size;            /* largest modulus */
+} rates;
+
 /* The eigenvalue of the largest real part, by LAPACK; a is destroyed. */
-static mt_status fastest(int n, mt_complex *a, mt_complex *w, double *rate, double *frequency,
-                         mt_error *err) {
+static mt_status fastest(int n, mt_complex *a, mt_complex *w, rates *r, mt_error *err) {
     if (n == 1)
         w[0] = a[0];
     else if (LAPACKE_zgeev(LAPACK_ROW_MAJOR, 'N', 'N', n, a, n, w, NULL, n, NULL, n) != 0)
         return mt_fail(err, MT_ENUMERIC, "the growth rates of waves did not converge");
-    for (int i = 0; i < n; i++)
-        if (i == 0 || creal(w[i]) > *rate) *rate = creal(w[i]), *frequency = fabs(cimag(w[i]));
+    for (int i = 0; i < n; i++) {
+        if (i == 0 || creal(w[i]) > r->rate) r->rate = creal(w[i]), r->frequency = fabs(cimag(w[i]));
+        r->size = fmax(r->size, cabs(w[i]));
+    }
     return MT_OK;
 }
 
-mt_status mt_model_growth(mt_model *m, const double mean[], const double k[3], double time, double *rate,
-                          double *frequency, mt_error *err) {
+static mt_status rates_at(mt_model *m, const double mean[], const double k[3], double time, rates *r,
+                          mt_error *err) {
     mt_waves x;
-    *rate = *frequency = 0;
+    memset(r, 0, sizeof *r);
     mt_status st = mt_waves_begin(&x, m, false, mean, time, err);
     if (st) return st;
     mt_complex *a = mt_alloc((size_t)(x.n * x.n), sizeof *a), *w = mt_alloc((size_t)x.n, sizeof *w);
     if (!a || !w) st = mt_fail(err, MT_ENOMEM, "no memory for the growth of waves");
     if (!st) st = mt_wave_matrix(&x, k, a, err);
-    if (!st) st = fastest(x.n, a, w, rate, frequency, err);
+    if (!st) st = fastest(x.n, a, w, r, err);
     mt_free(a), mt_free(w);
     mt_waves_end(&x);
+    return st;
+}
+
+mt_status mt_model_growth(mt_model *m, const double mean[], const double k[3], double time, double *rate,
+                          double *frequency, mt_error *err) {
+    rates r;
+    mt_status st = rates_at(m, mean, k, time, &r, err);
+    *rate = r.rate, *frequency = r.frequency;
+    return st;
+}
+
+/* --- well-posed?
+ * ------------------------------------------------------------------------------------------------------ */
+
+/* Growth at the grid's shortest wave and ten and a hundred times shorter ones: where it rises on and on, the
+ * equations have no solution that a finer grid would approach. */
+static mt_status along(mt_model *m, const double mean[], const double direction[3], mt_error *err) {
+    rates r[3];
+    double size = 1;
+    for (int i = 0; i < 3; i++, size *= 10) {
+        double k[3] = {size * direction[0], size * direction[1], size * direction[2]};
+        mt_status st = rates_at(m, mean, k, m->state.time, &r[i], err);
+        if (st) return st;
+        if (!(r[i].rate > 1e-9 * r[i].size)) return MT_OK; /* rounding of a rate of 0 */
+    }
+    if (!(r[1].rate > 2 * r[0].rate && r[2].rate > 2 * r[1].rate)) return MT_OK;
+    return mt_fail(
+        err, MT_EINPUT,
+        "the shorter a wave, the faster it grows (rates %.3g, %.3g, %.3g at the grid's shortest wave, a "
+        "tenth and a hundredth of it): the equations have no stable implicit part. A composition "
+        "inside the spinodal needs a gradient energy, diffusion its sign, a mobility matrix positive "
+        "eigenvalues (lowest here %.3g of the largest element)",
+        r[0].rate, r[1].rate, r[2].rate, fmin(1, m->state.matrix_lowest));
+}
+
+mt_status mt_model_check_posed(mt_model *m, mt_error *err) {
+    mt_error local = {0};
+    double *mean = mt_alloc((size_t)m->n, sizeof *mean), corner[3] = {0, 0, 0};
+    if (!mean) return mt_fail(err, MT_ENOMEM, "no memory for the growth of waves");
+    for (int i = 0; i < m->n; i++) mean[i] = m->mover[i].u[0];
+    mt_status st = MT_OK;
+    for (int a = 0; a < m->grid->dim && !st; a++) {
+        double axis[3] = {0, 0, 0};
+        axis[a] = corner[a] = m->grid->n[a] > 1 ? M_PI / m->grid->h[a] : 0;
+        if (axis[a] > 0) st = along(m, mean, axis, &local);
+    }
+    if (!st) st = along(m, mean, corner, &local);
+    mt_free(mean);
+    if (st == MT_EUNSUPPORTED || st == MT_ENUMERIC) return MT_OK; /* no homogeneous state to ask about */
+    if (st && err) *err = local;
     return st;
 }

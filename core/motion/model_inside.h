@@ -122,6 +122,9 @@ mt_status mt_model_derive(mt_model *m,
                           mt_error *err); /* potentials, right-hand sides, split, program; idempotent */
 void mt_model_forget(mt_model *m);        /* undoes derive and start */
 
+/* growth.c: refuses equations whose shortest waves grow without bound */
+mt_status mt_model_check_posed(mt_model *m, mt_error *err);
+
 /* matrix.c: what state says of mobility and rate matrices, at the fields' present values */
 mt_status mt_model_check_matrices(mt_model *m, mt_error *err);
 

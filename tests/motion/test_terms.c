@@ -123,9 +123,21 @@ static void matrices_are_judged(void **state) {
     check_ok(mt_model_start(s.m, &o, 0, &s.err), &s.err);
     check_close(mt_model_state(s.m)->matrix_skew, 0.3, 1e-12, 0);
     scene_close(&s);
-    open_two(&s, 1.5, 1.5);
+    open_two(&s, 1.5, 1.5); /* short waves would grow without bound */
+    assert_int_equal(mt_model_start(s.m, &o, 0, &s.err), MT_EINPUT);
+    assert_non_null(strstr(s.err.text, "-0.333"));
+    scene_close(&s);
+    /* positive about the means, not in every cell */
+    open_two(&s, 0, 0);
+    fill(s.c, rough);
+    const mt_expr *steep = mul(&s, num(&s, 20), sub(&s, s.nc, num(&s, 0.33)));
+    check_ok(mt_model_couple(s.m, s.c, s.e, steep, &s.err), &s.err);
+    check_ok(mt_model_couple(s.m, s.e, s.c, steep, &s.err), &s.err);
     check_ok(mt_model_start(s.m, &o, 0, &s.err), &s.err);
-    check_close(mt_model_state(s.m)->matrix_lowest, -0.5 / 1.5, 1e-12, 0);
+    size_t cell = mt_model_state(s.m)->matrix_cell;
+    double off = fabs(20 * (s.c->values[cell] - 0.33));
+    check_close(mt_model_state(s.m)->matrix_lowest, (1 - off) / fmax(1, off), 1e-6, 1e-6);
+    assert_true(off > 1);
     scene_close(&s);
     int n[2] = {nx, 4};
     double h[2] = {1, 1};
