@@ -15,6 +15,8 @@ mottle: heat treatments of materials that unmix, from a Lua script to a measured
       --threads N      threads (default: the machine's cores); results do not depend on it
       --quiet          no progress, no summary
   mottle plan SCRIPT [name=value ...]   what would be solved, at which scales, at what cost; nothing is run
+      --into FOLDER    keep it there too: plan.txt, growth.csv and growth.svg (growth rate against wavenumber)
+      --replace        replace that folder if it exists
   mottle report FOLDER                  makes report.html of a run folder again
   mottle --help, mottle --version
 
@@ -139,7 +141,7 @@ local function run_command(args)
 end
 
 local function plan_command(args)
-  local o, rest = parse(args, { threads = true }, {})
+  local o, rest = parse(args, { threads = true, into = true }, { replace = true })
   if not o then return usage_error(rest) end
   if not rest[1] then return usage_error("plan: which script?") end
   local ok, why = take_inputs(rest)
@@ -147,7 +149,10 @@ local function plan_command(args)
   if not ok then return usage_error(why) end
   local done = {}
   function run.plan(m, r, options)
-    core.write(1, require("plan").text(m, r, options))
+    local plan = require("plan")
+    local words, kept = plan.text(m, r, options)
+    if o.into then plan.save(core.folder(o.into, o.replace and "replace plain" or "plain"), words, kept) end
+    core.write(1, words)
     require("sandbox").leaving = done
     error(done, 0) -- unwinds the script
   end

@@ -20,13 +20,15 @@ static mt_folder *folder_at(lua_State *L, int index) {
     return f;
 }
 
-/* folder(path, "make" | "replace" | "open") */
+/* folder(path, "make" | "replace" | "open" | "plain" | "replace plain") */
 static int open_folder(lua_State *L) {
     mt_error err = {0};
     const char *path = luaL_checkstring(L, 1), *how = luaL_checkstring(L, 2);
     mt_folder **f = glue_object(L, sizeof *f, GLUE_FOLDER);
     if (strcmp(how, "open") == 0)
         glue_check(L, mt_folder_open(f, path, &err), &err);
+    else if (strstr(how, "plain"))
+        glue_check(L, mt_folder_make_plain(f, path, strncmp(how, "replace", 7) == 0, &err), &err);
     else
         glue_check(L, mt_folder_make(f, path, strcmp(how, "replace") == 0, &err), &err);
     return 1;

@@ -3,57 +3,9 @@ local core = require "core"
 local text = require "text"
 local units = require "unit"
 local schedule = require "schedule"
+local waves = require "waves"
 
 local M = {}
-
-local golden = (math.sqrt(5) - 1) / 2
-
-local function refine(f, a, b)
-  local c, d = b - golden * (b - a), a + golden * (b - a)
-  local fc, fd = f(c), f(d)
-  for _ = 1, 80 do
-    if fc > fd then b, d, fd = d, c, fc; c = b - golden * (b - a); fc = f(c)
-    else a, c, fc = c, d, fd; d = a + golden * (b - a); fd = f(d) end
-  end
-  return 0.5 * (a + b)
-end
-
-local function bisect(f, a, b)
-  for _ = 1, 80 do
-    local c = 0.5 * (a + b)
-    if (f(c) > 0) == (f(a) > 0) then a = c else b = c end
-  end
-  return 0.5 * (a + b)
-end
-
----Fastest wave along an axis about the homogeneous state: { k, rate, critical } or { stable = true, rate, k }.
----Wavenumbers from half the box's first mode to the grid's Nyquist wavenumber are scanned, then refined.
-function M.fastest(m, means, axis, time)
-  local g = m.grid
-  local function rate(k)
-    local v = { 0, 0, 0 }
-    v[axis] = k
-    return core.growth(m.core, means, v, time)
-  end
-  local low, high, n = math.pi / g.length[axis] / 4, math.pi / g.spacing[axis], 400
-  local ks, rs, best = {}, {}, 1
-  for i = 0, n do
-    ks[i + 1] = low * (high / low) ^ (i / n)
-    rs[i + 1] = rate(ks[i + 1])
-    if rs[i + 1] > rs[best] then best = i + 1 end
-  end
-  local k = refine(rate, ks[math.max(1, best - 1)], ks[math.min(n + 1, best + 1)])
-  local r = rate(k)
-  if not (r > 0) then return { stable = true, rate = r, k = k } end
-  local critical
-  for i = best, n do
-    if rs[i] > 0 and rs[i + 1] <= 0 then
-      critical = bisect(rate, ks[i], ks[i + 1])
-      break
-    end
-  end
-  return { k = k, rate = r, critical = critical, beyond = critical == nil }
-end
 
 local function homogeneous_means(m)
   local means = {}
@@ -62,20 +14,6 @@ local function homogeneous_means(m)
 end
 
 local axis_names = { "x", "y", "z" }
-
----The fastest wave along each axis that has cells to show one, and which of them is the fastest of all.
----@return table waves by axis
----@return integer axis of the fastest
-local function along_axes(m, means, time)
-  local waves, best = {}, 1
-  for a = 1, m.grid.dim do
-    if a == 1 or m.grid.cells[a] > 1 then
-      waves[a] = M.fastest(m, means, a, time)
-      if waves[a].rate > waves[best].rate * (1 + 1e-6) then best = a end
-    end
-  end
-  return waves, best
-end
 
 -- Each axis has to show the wave that grows along it; axes with the same numbers are told once.
 local function advise(out, g, axis, wave, real)
@@ -101,26 +39,62 @@ local function advise(out, g, axis, wave, real)
   end
 end
 
+-- Eight wavenumbers of the fastest direction.
+local function table_text(out, m, means, time, wave, real)
+  out[#out + 1] = string.format("    %-16s %-14s %-16s %s", "wavelength", "wavenumber", "growth rate", "amplitude times e in")
+  for _, p in ipairs(waves.curve(m, means, wave, time, 8)) do
+    out[#out + 1] = string.format("    %-16s %-14s %-16s %s", text.length(2 * math.pi / p[1], real), text.number(p[1]) .. (real and " 1/m" or ""), text.number(p[2]) .. (real and " 1/s" or ""),
+      p[2] > 0 and text.time(1 / p[2], real) or "decays")
+  end
+end
+
+local function directions_text(out, survey, real)
+  out[#out + 1] = "    The energy or mobility depends on direction:"
+  for _, w in ipairs(survey.waves) do
+    out[#out + 1] = string.format("    along %-12s %s", w.direction.name, w.stable and "stable (largest rate " .. text.number(w.rate) .. (real and " 1/s)" or ")") or
+      string.format("fastest wavelength %-12s growth time %s", text.length(2 * math.pi / w.k, real), text.time(1 / w.rate, real)))
+  end
+end
+
+-- What a state's waves look like is kept for the files.
+local function keep_curves(kept, m, means, time, label, survey)
+  local state = { label = label, curves = {} }
+  local list = survey.anisotropic and { survey.best, survey.worst } or { survey.best }
+  local reach = waves.reach(survey.best)
+  for i, w in ipairs(list) do
+    state.curves[i] = { name = survey.anisotropic and w.direction.name or "", mark = i == 1 and "*" or "o", points = waves.curve(m, means, w, time, 120, math.min(reach, w.high)) }
+  end
+  kept[#kept + 1] = state
+  return state
+end
+
 local function growth_text(out, m, means, time, label, real)
   local g = m.grid
-  local ok, waves, best = pcall(along_axes, m, means, time)
+  local ok, survey = pcall(waves.survey, m, means, time)
   if not ok then
-    out[#out + 1] = "  " .. label .. ": " .. tostring(waves):gsub("^%S+:%d+: ", "")
+    out[#out + 1] = "  " .. label .. ": " .. tostring(survey):gsub("^%S+:%d+: ", "")
     return
   end
-  local wave = waves[best]
+  local wave = survey.best
+  local state = keep_curves(out.kept, m, means, time, label, survey)
   if wave.stable then
     out[#out + 1] = string.format("  %s: stable against waves of every length (largest rate %s%s)", label, text.number(wave.rate), real and " 1/s" or "")
     out[#out + 1] = "    No decomposition in a run from small noise then means that the model cannot nucleate, not that the alloy is stable."
     return
   end
   out[#out + 1] = string.format("  %s: unstable. Fastest wavelength %s%s, growth time (amplitude times e) %s%s", label, text.length(2 * math.pi / wave.k, real),
-    best > 1 and " (along " .. axis_names[best] .. ")" or "", text.time(1 / wave.rate, real), wave.critical and ", critical wavelength " .. text.length(2 * math.pi / wave.critical, real) or "")
+    survey.anisotropic and " (along " .. wave.direction.name .. ")" or "", text.time(1 / wave.rate, real), wave.critical and ", critical wavelength " .. text.length(2 * math.pi / wave.critical, real) or "")
+  if (wave.frequency or 0) > 1e-9 * wave.rate then out[#out + 1] = "    The fastest wave travels or swings with a period of " .. text.time(2 * math.pi / wave.frequency, real) end
   if wave.beyond then out[#out + 1] = "    WARNING: waves grow up to the grid's shortest one: the spacing is too coarse, or nothing damps short waves" end
+  table_text(out, m, means, time, wave, real)
+  if survey.anisotropic then directions_text(out, survey, real) end
+  out[#out + 1] = waves.drawn(state.curves, real and "1/s" or "rate", real and " 1/m" or " wavenumber")
+  if survey.anisotropic then out[#out + 1] = string.format("    * along %s, o along %s", survey.best.direction.name, survey.worst.direction.name) end
   out.told = {}
   for a = 1, g.dim do
-    local w = waves[a]
-    if w and not w.stable then advise(out, g, a, w, real) end
+    for _, w in ipairs(survey.waves) do
+      if w.direction.name == axis_names[a] and not w.stable then advise(out, g, a, w, real) end
+    end
   end
 end
 
@@ -181,6 +155,7 @@ function M.text(m, run)
     end
   end
   out[#out + 1] = "Waves about the homogeneous state"
+  out.kept = {}
   local means = homogeneous_means(m)
   local names = {}
   for i, f in ipairs(m.moving) do names[i] = core.field_name(f) .. " = " .. text.number(means[i]) end
@@ -188,7 +163,25 @@ function M.text(m, run)
   stages_text(out, m, run, means, real)
   out[#out + 1] = "Cost"
   cost_text(out, m, real)
-  return table.concat(out, "\n") .. "\n"
+  return table.concat(out, "\n") .. "\n", out.kept
+end
+
+---The plan in a folder of its own: plan.txt, and where waves could be told growth.csv (a line per state, direction and
+---wavenumber) and growth.svg.
+function M.save(folder, words, kept)
+  local real = units.used
+  core.put(folder, "plan.txt", words)
+  if #kept == 0 then return end
+  local lines = { real and "state,direction,wavenumber [1/m],growth rate [1/s]" or "state,direction,wavenumber,growth rate" }
+  for _, s in ipairs(kept) do
+    for _, c in ipairs(s.curves) do
+      for _, p in ipairs(c.points) do
+        lines[#lines + 1] = string.format('"%s",%s,%.17g,%.17g', s.label:gsub('"', '""'), c.name == "" and "any" or c.name, p[1], p[2])
+      end
+    end
+  end
+  core.put(folder, "growth.csv", table.concat(lines, "\n") .. "\n")
+  core.put(folder, "growth.svg", waves.svg(kept, real and "1/s" or "1/time", real and "1/m" or "1/length"))
 end
 
 M.schedule = schedule

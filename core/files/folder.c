@@ -197,7 +197,8 @@ done:
 /* ---- what a run folder holds ---- */
 
 static const char *const kept_files[] = {"ledger.csv",  "journal",      "state",
-                                         "report.html", "summary.json", "script.lua"};
+                                         "report.html", "summary.json", "script.lua",
+                                         "plan.txt",    "growth.csv",   "growth.svg"};
 static const struct {
     const char *name;
     const char *endings[2]; /* "" stands for any */
@@ -397,10 +398,10 @@ static mt_status take_over(mt_folder *folder, bool replace, bool *fresh, mt_erro
     return status;
 }
 
-static mt_status furnish(mt_folder *folder, bool fresh, mt_error *err) {
+static mt_status furnish(mt_folder *folder, bool fresh, bool for_run, mt_error *err) {
     mt_status status = fresh ? lock(folder, err) : MT_OK;
-    if (!status) status = mt_folder_sub(folder, "pictures", err);
-    if (!status) status = mt_folder_sub(folder, "fields", err);
+    if (!status && for_run) status = mt_folder_sub(folder, "pictures", err);
+    if (!status && for_run) status = mt_folder_sub(folder, "fields", err);
     if (!status && mt_call_sync(folder->fd)) status = mt_call_failed(err, "flushed to disk", folder->path);
     return status;
 }
@@ -412,7 +413,7 @@ static void clear_away(mt_folder *folder) {
     unlinkat(folder->fd, marker, 0);
 }
 
-mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_error *err) {
+static mt_status make(mt_folder **out, const char *path, bool for_run, bool replace, mt_error *err) {
     MT_REQUIRE(out && path, err);
     *out = NULL;
     mt_folder *folder = NULL;
@@ -424,7 +425,7 @@ mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_err
     if (!made) status = take_over(folder, replace, &fresh, err);
     if (!status && fresh) status = write_marker(folder, err);
     if (!status) {
-        status = furnish(folder, fresh, err);
+        status = furnish(folder, fresh, for_run, err);
         if (status && fresh) clear_away(folder);
     }
     if (status) {
@@ -433,6 +434,14 @@ mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_err
     }
     *out = folder;
     return status;
+}
+
+mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_error *err) {
+    return make(out, path, true, replace, err);
+}
+
+mt_status mt_folder_make_plain(mt_folder **out, const char *path, bool replace, mt_error *err) {
+    return make(out, path, false, replace, err);
 }
 
 mt_status mt_folder_resume(mt_folder **out, const char *path, mt_error *err) {

@@ -22,6 +22,9 @@ typedef struct mt_folder mt_folder;
  * Anything else found in it is named and refused with EEXISTS before the first file is removed. ESYSTEM when
  * another run is using it. */
 MT_API mt_status mt_folder_make(mt_folder **out, const char *path, bool replace, mt_error *err) MT_MUST_USE;
+/* The same without pictures/ and fields/: for a plan. */
+MT_API mt_status mt_folder_make_plain(mt_folder **out, const char *path, bool replace,
+                                      mt_error *err) MT_MUST_USE;
 
 /* Opens the run folder at `path` to go on with it, and locks it. Temporaries (*.part) that a killed run left
  * in it are removed. EINPUT when it has no marker, ESYSTEM when another run is using it. */

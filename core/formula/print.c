@@ -139,8 +139,9 @@ static void flatten_product(items *l, const mt_expr *e) {
  * --------------------------------------------------------------------------------------------------------------------
  */
 
-static bool negative_number_in_front(const mt_expr *e) {
-    while (e->op == MT_MUL_OP) e = e->arg[0];
+/* A product shows its sign in front, wherever its number stands. */
+static bool negative_number(const mt_expr *e) {
+    if (e->op == MT_MUL_OP) return negative_number(e->arg[0]) != negative_number(e->arg[1]);
     return e->op == MT_CONST_OP && e->value < 0;
 }
 
@@ -152,7 +153,7 @@ static void print_sum(out *o, const mt_expr *e) {
     flatten_sum(&l, e, false);
     if (l.n) qsort(l.at, l.n, sizeof *l.at, by_rank);
     for (size_t i = 0; i < l.n; i++) {
-        bool flip = negative_number_in_front(l.at[i].e), minus = l.at[i].minus != flip;
+        bool flip = negative_number(l.at[i].e), minus = l.at[i].minus != flip;
         if (i)
             put(o, minus ? " - " : " + ");
         else if (minus)
