@@ -134,9 +134,37 @@ static const mt_expr *linear_in(mt_model *m, int number, int source) {
     return l;
 }
 
+/* Only sums, uniform factors and spectral operators between e and the fields. */
+static bool linear_in_fields(const mt_expr *e) {
+    switch (e->op) {
+    case MT_FIELD_OP: return true;
+    case MT_ADD_OP:
+    case MT_SUB_OP: return linear_in_fields(e->arg[0]) && linear_in_fields(e->arg[1]);
+    case MT_NEG_OP:
+    case MT_DERIV_OP:
+    case MT_LAPLACIAN_OP:
+    case MT_FILTER_OP: return linear_in_fields(e->arg[0]);
+    case MT_MUL_OP:
+        return (mt_expr_uniform(e->arg[0]) && linear_in_fields(e->arg[1])) ||
+               (mt_expr_uniform(e->arg[1]) && linear_in_fields(e->arg[0]));
+    default: return false;
+    }
+}
+
+/* Whether a cell-wise formula needs nothing but fields and linear operators on them: stage 0 can compute it.
+ */
+static bool from_fields_alone(mt_model *m, const mt_expr *e) {
+    const mt_expr *leaf[64];
+    int n = mt_split_leaves(mt_build_expand(builder(m), e, m->grid->dim), leaf, 64);
+    bool plain = n >= 0 && n <= 64;
+    for (int i = 0; i < n && plain; i++) plain = linear_in_fields(leaf[i]);
+    return plain;
+}
+
 static bool add_dominate(mt_model *m, mt_mover *v, const mt_stiff *item) {
     mt_builder *b = builder(m);
     int reduction = -1;
+    if (!from_fields_alone(m, item->a)) return false; /* stays explicit */
     if (mt_program_reduce(&m->program, item->a, MT_REDUCE_MAX, &reduction) != MT_OK) return false;
     mt_dominate *more = mt_resize(v->dominate, (size_t)v->dominates + 1, sizeof *more);
     if (!more) {
@@ -165,7 +193,7 @@ static void derive_implicit(mt_model *m, mt_mover *v) {
         mt_stiff *s = &stiff.item[i];
         if (mt_expr_uniform(s->a))
             sum = mt_build_sub(b, sum, mt_build_mul(b, s->a, s->o));
-        else if (s->even && !(mt_expr_contents(s->a) & MT_HAS_SPECTRAL) && add_dominate(m, v, s)) {
+        else if (s->even && add_dominate(m, v, s)) {
             const mt_dominate *d = &v->dominate[v->dominates - 1];
             sum = mt_build_sub(b, sum, mt_build_mul(b, mt_build_symbol(b, d->scale), d->o));
         }
@@ -206,22 +234,6 @@ static void pair_up(mt_model *m) {
 /* --- energy
  * -------------------------------------------------------------------------------------------------------------
  */
-
-/* Only sums, uniform factors and spectral operators between e and the fields. */
-static bool linear_in_fields(const mt_expr *e) {
-    switch (e->op) {
-    case MT_FIELD_OP: return true;
-    case MT_ADD_OP:
-    case MT_SUB_OP: return linear_in_fields(e->arg[0]) && linear_in_fields(e->arg[1]);
-    case MT_NEG_OP:
-    case MT_LAPLACIAN_OP:
-    case MT_FILTER_OP: return linear_in_fields(e->arg[0]);
-    case MT_MUL_OP:
-        return (mt_expr_uniform(e->arg[0]) && linear_in_fields(e->arg[1])) ||
-               (mt_expr_uniform(e->arg[1]) && linear_in_fields(e->arg[0]));
-    default: return false;
-    }
-}
 
 static void add_quadratic(mt_model *m, const mt_symbol *field, const mt_expr *q) {
     mt_builder *b = builder(m);

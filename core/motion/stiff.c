@@ -109,20 +109,43 @@ static void take_number(list *l, const mt_expr **a, const mt_expr **o) {
         }
 }
 
+/* |k_i k_j| <= (k_i^2 + k_j^2)/2 for the two axes with odd powers that a product of even order may have: a
+ * bound by even powers, for coefficients of either sign. */
+static const mt_expr *even_bound(list *l, const mono *m) {
+    mono rest = *m;
+    const mt_expr *squares = mt_build_number(l->b, 0);
+    for (int a = 0; a < 3; a++) {
+        if (m->power[a] % 2 == 0) continue;
+        const mt_expr *k = mt_build_wave(l->b, a);
+        squares = mt_build_add(l->b, squares, mt_build_mul(l->b, k, k));
+        rest.power[a]--;
+    }
+    const mt_expr *half = mt_build_mul(l->b, mt_build_number(l->b, 0.5), squares);
+    return mt_build_mul(l->b, wave_product(l, &rest), half);
+}
+
+/* One monomial of the symbol as an item: exact where its coefficient is uniform, else fit to be dominated. */
+static void make_item(list *l, const mono *m, mt_stiffness *out) {
+    const mt_expr *a = mt_build_collect(l->b, m->turns == 0 ? mt_build_neg(l->b, m->a) : m->a);
+    const mt_expr *o = wave_product(l, m);
+    bool even = mt_expr_is_const(m->rest, 1);
+    bool odd_axes = m->power[0] % 2 || m->power[1] % 2 || m->power[2] % 2;
+    if (!a || !o) return;
+    if (even && odd_axes && !mt_expr_uniform(a))
+        a = mt_build_unary(l->b, MT_ABS_OP, a), o = even_bound(l, m);
+    else
+        even = even && !odd_axes;
+    take_number(l, &a, &o);
+    add_item(l, out, a, o, even);
+}
+
 mt_status mt_stiff_find(mt_builder *b, const mt_expr *rhs, const mt_expr *field, int dim, mt_stiffness *out) {
     list l = {.b = b, .dim = dim, .field = field};
     memset(out, 0, sizeof *out);
     const mt_expr *one = mt_build_number(b, 1);
     frozen(&l, mt_build_expand(b, rhs, dim), (mono){one, one, {0, 0, 0}, 0});
-    for (int i = 0; i < l.n && b->status == MT_OK; i++) {
-        mono *m = &l.m[i];
-        if (m->turns % 2) continue;
-        const mt_expr *a = mt_build_collect(b, m->turns == 0 ? mt_build_neg(b, m->a) : m->a);
-        const mt_expr *o = wave_product(&l, m);
-        bool even = mt_expr_is_const(m->rest, 1) && !(m->power[0] % 2 || m->power[1] % 2 || m->power[2] % 2);
-        take_number(&l, &a, &o);
-        add_item(&l, out, a, o, even);
-    }
+    for (int i = 0; i < l.n && b->status == MT_OK; i++)
+        if (l.m[i].turns % 2 == 0) make_item(&l, &l.m[i], out);
     mt_free(l.m);
     if (b->status != MT_OK) mt_stiff_end(out);
     return b->status;
