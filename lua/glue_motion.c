@@ -325,6 +325,7 @@ static int state(lua_State *L) {
 typedef struct tick_ctx {
     lua_State *L;
     bool failed, single;
+    double enough; /* ends at the first step that reaches this time */
 } tick_ctx;
 
 /* Also the table is made in here: memory may end while it is. */
@@ -339,7 +340,7 @@ static int call_tick(lua_State *L) {
 static bool tick(void *ctx, const mt_run_state *s) {
     tick_ctx *t = ctx;
     lua_State *L = t->L;
-    if (glue_stopping() || t->single) return true;
+    if (glue_stopping() || t->single || s->time >= t->enough) return true;
     if (s->steps % 16 || !lua_isfunction(L, 3)) return false;
     lua_pushcfunction(L, call_tick);
     lua_pushvalue(L, 3);
@@ -348,18 +349,19 @@ static bool tick(void *ctx, const mt_run_state *s) {
     return t->failed;
 }
 
-/* advance(model, until, tick function or nil, single) -> true when `until` was reached, false when stopped on
- * the way */
+/* advance(model, until, tick function or nil, single, enough) -> true when `until` was reached, false when
+ * stopped on the way: after one step (single), or at the first step's end at or after the time `enough` */
 static int advance(lua_State *L) {
     mt_error err = {0};
     mt_model *m = model_at(L, 1);
     double until = luaL_checknumber(L, 2);
-    lua_settop(L, 4);
-    tick_ctx t = {L, false, lua_toboolean(L, 4)};
+    lua_settop(L, 5);
+    tick_ctx t = {L, false, lua_toboolean(L, 4), luaL_optnumber(L, 5, HUGE_VAL)};
     luaL_checkstack(L, 8, NULL);
     mt_status st = mt_model_advance(m, until, tick, &t, &err);
     if (t.failed) return lua_error(L);
-    if (st == MT_ESTOPPED && t.single && !glue_stopping()) {
+    bool expected = t.single || mt_model_state(m)->time >= t.enough;
+    if (st == MT_ESTOPPED && expected && !glue_stopping()) {
         lua_pushboolean(L, 0);
         return 1;
     }

@@ -139,13 +139,13 @@ local function is_multiple(dt, t0, time)
   return math.abs(t0 + n * dt - time) <= 1e-9 * dt
 end
 
--- What a script asks for counts from time 0, so that a loop of short runs keeps its beat; a default divides the run at hand.
-local function beat(every, default, run)
-  if every and (run.t1 - run.t0) / every > 1e9 then
+-- What a script asks for counts from time 0, so that a loop of short runs keeps its beat, and is landed on. A default divides the
+-- run at hand and takes the first step's end at or after each of its times: it does not shorten steps.
+local function check_beat(every, run)
+  if (run.t1 - run.t0) / every > 1e9 then
     core.fail(string.format("every %.6g is too short: that would be %.6g times in a run of %.6g", every, (run.t1 - run.t0) / every, run.t1 - run.t0))
   end
-  if every then return every, 0 end
-  return default, run.t0
+  return every
 end
 
 -- Whether x comes after time by more than rounding: 0.3 and 0.1 + 0.2 are one time.
@@ -158,14 +158,24 @@ local function next_event(m, run, time)
   end
   for _, h in ipairs(m.at_hooks) do if not h.done and after(h.time, time) and after(t, h.time) then t = h.time end end
   -- a beat that rounding alone parts from an end is that end: no second call, no step of no length
-  local function sooner_beat(every, default)
-    local dt, from = beat(every, default, run)
-    if dt and next_multiple(dt, from, time) < t - 1e-9 * dt then t = next_multiple(dt, from, time) end
+  local function sooner_beat(every)
+    local dt = every and check_beat(every, run)
+    if dt and next_multiple(dt, 0, time) < t - 1e-9 * dt then t = next_multiple(dt, 0, time) end
   end
-  sooner_beat(m.recorded.every, run.record_every)
-  for _, p in ipairs(m.pictures) do sooner_beat(p.every, run.picture_every) end
+  sooner_beat(m.recorded.every)
+  for _, p in ipairs(m.pictures) do sooner_beat(p.every) end
   for _, p in ipairs(m.saves) do sooner_beat(p.every) end
   for _, h in ipairs(m.every_hooks) do sooner_beat(h.time) end
+  return t
+end
+
+-- The next time of a default, at whose first step's end something happens.
+local function next_default(m, run, time)
+  local t = math.huge
+  if not m.recorded.every then t = next_multiple(run.record_every, run.t0, time) end
+  for _, p in ipairs(m.pictures) do
+    if not p.every then t = math.min(t, next_multiple(run.picture_every, run.t0, time)) end
+  end
   return t
 end
 
@@ -181,8 +191,8 @@ end
 local function happen(m, run, stage, stage_ends)
   local time, last = m.time, m.time >= run.t1
   local function due(every, default)
-    local dt, from = beat(every, default, run)
-    return dt and is_multiple(dt, from, time)
+    if every then return is_multiple(every, 0, time) end
+    return default and next_multiple(default, run.t0, run.before) <= time * (1 + 1e-12)
   end
   if stage_ends or last or due(m.recorded.every, run.record_every) then record(m, stage) end
   for _, p in ipairs(m.pictures) do
@@ -193,6 +203,7 @@ local function happen(m, run, stage, stage_ends)
   end
   for _, h in ipairs(m.every_hooks) do if due(h.time) then h.f(m) end end
   call_at_hooks(m)
+  run.before = time
 end
 
 local function look(m)
@@ -230,11 +241,12 @@ local function advance(m, run)
     local target = next_event(m, run, m.time)
     local single = open_condition(m)
     local tick = function(state) progress(m, state, run) end
+    local default = next_default(m, run, run.before)
     repeat
-      local arrived = core.advance(m.core, target, tick, single)
+      local arrived = core.advance(m.core, target, tick, single, default)
       look(m)
       single = open_condition(m)
-    until arrived or m.time >= target
+    until arrived or m.time >= math.min(target, default)
     local stage, ends = stage_ending(run, m.time)
     happen(m, run, stage, ends)
     if ends or m.time >= run.t1 then note_stage(m, run, stage) end
@@ -257,6 +269,7 @@ local function prepare(m, o)
   local total = run.t1 - t0
   run.record_every = total / 100
   run.picture_every = total / 4
+  run.before = t0
   return run
 end
 
