@@ -123,6 +123,7 @@ local function warnings(d)
   if d.dim and d.dim < 3 then
     list[#list + 1] = string.format("This is a %d-D run: percolation and the prefactors of times differ from 3-D material.", d.dim)
   end
+  for _, w in ipairs(d.warnings or {}) do list[#list + 1] = w:sub(1, 1):upper() .. w:sub(2) .. "." end
   local s = d.state
   if s and (s.log_steps or 0) > 0 then
     list[#list + 1] = string.format("In %d steps a composition came so near to a pure component that the logarithm's smooth extension was used (lowest argument %s).", s.log_steps, text.number(s.log_lowest or 0))

@@ -39,6 +39,7 @@ function M.data(run, failure)
   }
   for i, x in ipairs(run.inputs.list) do d.inputs[i] = { name = x.name, value = x.value, meaning = x.meaning, given = x.given } end
   for i, s in ipairs(run.seeds) do d.seeds[i] = s end
+  d.warnings = run.warnings
   d.sources = {}
   for i, s in ipairs(require("sources").list) do d.sources[i] = { file = s.file, copy = s.copy } end
   if not m then return d end

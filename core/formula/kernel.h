@@ -21,6 +21,7 @@ typedef struct mt_kernel_spec {
     const mt_expr *const *out;
     const mt_expr *const *reduced;
     const mt_reduce *reduce;
+    bool literal; /* polynomials term by term as written, not by Horner's rule: the oracle's bits */
 } mt_kernel_spec;
 
 /* A reduction's result over one call of mt_kernel_run. */

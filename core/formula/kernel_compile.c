@@ -113,7 +113,7 @@ static bool gather_poly(item *p, const mt_expr *e, double sign) {
 
 static bool as_poly(compiler *c, const mt_expr *e, item *p) {
     *p = (item){.e = e};
-    if (e->op != MT_ADD_OP && e->op != MT_SUB_OP) return false;
+    if (c->spec->literal || (e->op != MT_ADD_OP && e->op != MT_SUB_OP)) return false;
     if (input_number(c, e) >= 0 || !gather_poly(p, e, 1) || p->degree < 2) return false;
     p->poly = true;
     return true;

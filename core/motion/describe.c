@@ -49,30 +49,67 @@ static const char *motion_text(mt_motion motion) {
     return texts[motion];
 }
 
-static void say_mover(text *t, const mt_mover *v) {
+/* d c/dt = div( M grad( dF/dc ) ) + div( M12 grad( dF/de ) ) ... with what the letters stand for. */
+static void say_equation(text *t, const mt_model *m, const mt_mover *v) {
+    const char *name = v->field->symbol->name;
+    bool flux = v->motion == MT_MOTION_CONSERVE;
+    say(t, "    equation   d%s/dt = ", name);
+    if (v->motion == MT_MOTION_EVOLVE)
+        say_expr(t, v->given);
+    else
+        say(t, flux ? "div( M grad( dF/d%s ) )" : "-L dF/d%s", name);
+    for (int j = 0; j < v->couplings; j++)
+        say(t, flux ? " + div( M%d grad( dF/d%s ) )" : " - L%d dF/d%s", j + 2,
+            m->mover[v->coupling[j].other].field->symbol->name);
+    if (v->velocity[0]) say(t, " - div( v %s )", name);
+    if (v->source) say(t, " + source");
+    if (v->keeps_mean) say(t, " + what keeps the mean");
+    if (v->noises) say(t, flux ? " + div( thermal noise )" : " + thermal noise");
+    if (v->motion != MT_MOTION_EVOLVE) {
+        say(t, flux ? ", M = " : ", L = ");
+        say_expr(t, v->given);
+    }
+    for (int j = 0; j < v->couplings; j++) {
+        say(t, flux ? ", M%d = " : ", L%d = ", j + 2);
+        say_expr(t, v->coupling[j].given);
+    }
+    for (int a = 0; a < m->grid->dim && v->velocity[0]; a++) {
+        say(t, a ? ", " : ", v = (");
+        say_expr(t, v->velocity[a]);
+    }
+    if (v->velocity[0]) say(t, ")");
+    if (v->source) {
+        say(t, ", source = ");
+        say_expr(t, v->source);
+    }
+    say(t, "\n");
+}
+
+static void say_mover(text *t, const mt_model *m, const mt_mover *v) {
     const char *name = v->field->symbol->name;
     say(t, "  field %s (%s)\n", name, motion_text(v->motion));
     if (v->motion == MT_MOTION_STILL) return;
     if (v->potential) {
         say(t, "    potential  dF/d%s = ", name);
         say_expr(t, v->potential);
-        say(t,
-            v->motion == MT_MOTION_CONSERVE ? "\n    equation   d%s/dt = div( M grad( dF/d%s ) ), M = "
-                                            : "\n    equation   d%s/dt = -L dF/d%s, L = ",
-            name, name);
-        say_expr(t, v->given);
-    } else {
-        say(t, "    equation   d%s/dt = ", name);
-        say_expr(t, v->rhs);
+        say(t, "\n");
     }
-    say(t, "\n    linear part, exact in k     ");
+    say_equation(t, m, v);
+    for (int j = 0; j < v->noises; j++) {
+        say(t, "    thermal noise of amplitude (per root of time) ");
+        say_expr(t, v->noise[j].amplitude);
+        say(t, "\n");
+    }
+    say(t, "    linear part, exact in k     ");
     say_expr(t, v->linear);
     say(t, "\n    taken implicitly            ");
     say_expr(t, v->implicit);
-    for (int j = 0; j < v->dominates; j++)
-        say(t, "%s",
-            j ? ""
-              : "\n      stabilisation = theta times the largest value over the cells of the coefficient");
+    if (v->dominates)
+        say(t, "\n      stabilisation = theta times the largest value over the cells of the coefficient");
+    if (v->partner >= 0) {
+        say(t, "\n    solved together with %s, whose part is ", m->mover[v->partner].field->symbol->name);
+        say_expr(t, v->cross);
+    }
     say(t, "\n");
 }
 
@@ -110,8 +147,8 @@ mt_status mt_model_describe(mt_model *m, char **out, mt_error *err) {
         say_expr(&t, m->energy);
         say(&t, "\n");
     }
-    for (int i = 0; i < m->n; i++) say_mover(&t, &m->mover[i]);
-    say(&t, "One step\n");
+    for (int i = 0; i < m->n; i++) say_mover(&t, m, &m->mover[i]);
+    say(&t, m->noisy ? "One step (two evaluations: ETDRK2, for the thermal noise)\n" : "One step\n");
     say_stages(&t, &m->program);
     say(&t, "  memory %.4g MB (%.3g bytes per cell)\n", (double)bytes / 1e6,
         (double)bytes / (double)m->grid->cells);

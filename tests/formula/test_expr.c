@@ -334,7 +334,7 @@ static void variation_of(stage *s, const mt_expr *density, unsigned seed) {
 static void variations_are_gradients(void **state) {
     (void)state;
     static const int sizes[3][3] = {{9, 1, 1}, {6, 5, 1}, {4, 3, 4}};
-    for (unsigned seed = 1; seed <= 360; seed++) {
+    for (unsigned seed = 1; seed <= 1800; seed++) {
         stage s;
         open_stage(&s, 1 + (int)(seed % 3), sizes[seed % 3], walls_of[seed / 3 % 2]);
         lcg = seed;
@@ -401,6 +401,104 @@ static void kernels_agree_with_oracle(void **state) {
         mt_kernel_free(&k);
         close_stage(&s);
     }
+}
+
+/* Arithmetic alone, also of both signs and through zero. */
+static const mt_expr *random_arithmetic(stage *s, int depth) {
+    if (depth == 0) {
+        const mt_expr *leaves[] = {s->nc, s->ne, s->nT, num(s, 0.7 * (double)dice(5) - 1)};
+        return leaves[dice(4)];
+    }
+    const mt_expr *a = random_arithmetic(s, depth - 1), *b = random_arithmetic(s, (int)dice((unsigned)depth));
+    static const mt_op twos[] = {MT_ADD_OP, MT_SUB_OP, MT_MUL_OP,  MT_DIV_OP,
+                                 MT_MIN_OP, MT_MAX_OP, MT_ABOVE_OP};
+    switch (dice(12)) {
+    case 0: return un(s, MT_ABS_OP, a);
+    case 1: return un(s, MT_NEG_OP, a);
+    case 2: return un(s, MT_SQRT_OP, un(s, MT_ABS_OP, a));
+    case 3: return where(s, bin(s, MT_ABOVE_OP, a, s->nc), b, a);
+    case 4: return bin(s, MT_POW_OP, a, num(s, (double)dice(9) - 2));
+    default: return bin(s, twos[dice(7)], a, b);
+    }
+}
+
+static void run_kernel(stage *s, const mt_expr *f, bool literal, const double *c, const double *e, size_t n,
+                       double *to) {
+    const mt_expr *in[2] = {s->nc, s->ne};
+    const double *from[2] = {c, e};
+    mt_kernel_spec spec = {.nin = 2, .in = in, .nout = 1, .out = &f, .literal = literal};
+    mt_kernel *k;
+    mt_place place = {0};
+    check_ok(mt_kernel_new(&k, &spec, &s->err), &s->err);
+    check_ok(mt_kernel_prepare(k, 0.5, &s->err), &s->err);
+    double *scratch = mt_alloc(mt_kernel_scratch(k), 8);
+    mt_kernel_run(k, &place, n, from, &to, NULL, scratch);
+    mt_free(scratch);
+    mt_kernel_free(&k);
+}
+
+static void arithmetic_bit_for_bit(void **state) {
+    (void)state;
+    int n[1] = {7};
+    for (unsigned seed = 1; seed <= 5000; seed++) {
+        stage s;
+        double c[7], e[7], slow[7], fast[7];
+        open_stage(&s, 1, n, walls_of[0]);
+        lcg = seed;
+        const mt_expr *f = random_arithmetic(&s, 1 + (int)dice(6));
+        check_ok(s.b.status, &s.err);
+        random_fields(&s, c, e);
+        evaluate(&s, f, c, e, slow);
+        run_kernel(&s, f, true, c, e, 7, fast);
+        for (int i = 0; i < 7; i++)
+            if (!(isnan(fast[i]) && isnan(slow[i])) && memcmp(&fast[i], &slow[i], 8) != 0 &&
+                !(fast[i] == 0 && slow[i] == 0)) {
+                char text[500];
+                mt_expr_print(f, text, sizeof text);
+                fail_msg("seed %u: %s: kernel %.17g, oracle %.17g", seed, text, fast[i], slow[i]);
+            }
+        close_stage(&s);
+    }
+}
+
+static double ulps(double a, double b) {
+    if (a == b || (isnan(a) && isnan(b))) return 0;
+    double size = nextafter(fabs(b), INFINITY) - fabs(b);
+    return fabs(a - b) / size;
+}
+
+/* Every function of one and two arguments against the C library's, over many sizes. */
+static void functions_within_four_ulps(void **state) {
+    (void)state;
+    enum { N = 4000 };
+    static double x[N], y[N], got[N];
+    stage s;
+    int n[1] = {4};
+    open_stage(&s, 1, n, walls_of[0]);
+    lcg = 5;
+    for (int i = 0; i < N; i++) {
+        x[i] = ldexp(0.5 + dice(1u << 30) * 0x1p-31, (int)dice(20) - 12);
+        y[i] = (dice(2) ? 1 : -1) * ldexp(0.5 + dice(1u << 30) * 0x1p-31, (int)dice(8) - 5);
+    }
+    const struct {
+        mt_op op;
+        double (*f)(double);
+    } ones[] = {{MT_EXP_OP, exp}, {MT_LOG_OP, log},   {MT_SIN_OP, sin},
+                {MT_COS_OP, cos}, {MT_TANH_OP, tanh}, {MT_SQRT_OP, sqrt}};
+    for (size_t j = 0; j < sizeof ones / sizeof *ones; j++) {
+        double worst = 0;
+        const double *argument = ones[j].op == MT_SQRT_OP || ones[j].op == MT_LOG_OP ? x : y;
+        run_kernel(&s, un(&s, ones[j].op, s.nc), false, argument, y, N, got);
+        for (int i = 0; i < N; i++) worst = fmax(worst, ulps(got[i], ones[j].f(argument[i])));
+        print_message("%s: %.2f ulp of the C library\n", mt_op_text(ones[j].op), worst);
+        assert_true(worst <= 4);
+    }
+    double worst = 0;
+    run_kernel(&s, bin(&s, MT_POW_OP, s.nc, s.ne), false, x, y, N, got);
+    for (int i = 0; i < N; i++) worst = fmax(worst, ulps(got[i], pow(x[i], y[i])));
+    print_message("power: %.2f ulp of the C library\n", worst);
+    assert_true(worst <= 4);
+    close_stage(&s);
 }
 
 static void collected_polynomials(void **state) {
@@ -521,6 +619,8 @@ int main(void) {
         cmocka_unit_test(every_operator_has_its_derivative),
         cmocka_unit_test(random_partials),
         cmocka_unit_test(filters_are_real_and_even),
+        cmocka_unit_test(arithmetic_bit_for_bit),
+        cmocka_unit_test(functions_within_four_ulps),
         cmocka_unit_test(variations_are_gradients),
         cmocka_unit_test(named_variations),
         cmocka_unit_test(kernels_agree_with_oracle),

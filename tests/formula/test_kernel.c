@@ -66,7 +66,7 @@ static void tiles_tails_and_aliases(void **state) {
     const mt_expr *sum = bin(&d, MT_ADD_OP, d.x[0], bin(&d, MT_MUL_OP, num(&d, 2), d.x[1]));
     const mt_expr *in[2] = {d.x[0], d.x[1]}, *out[3] = {d.x[1], d.x[0], sum}, *red[2] = {sum, d.x[0]};
     mt_reduce how[2] = {MT_REDUCE_SUM, MT_REDUCE_MAX};
-    mt_kernel *k = compile(&d, (mt_kernel_spec){2, 3, 2, in, out, red, how});
+    mt_kernel *k = compile(&d, (mt_kernel_spec){2, 3, 2, in, out, red, how, false});
     double *scratch = mt_alloc(mt_kernel_scratch(k), 8);
     mt_place place = {.first = 100};
     for (size_t n = 0; n <= 3 * MT_TILE + 1; n++) {
@@ -102,7 +102,7 @@ static void reductions_and_nan(void **state) {
     open_desk(&d);
     const mt_expr *red[3] = {d.x[0], d.x[0], d.x[0]};
     mt_reduce how[3] = {MT_REDUCE_SUM, MT_REDUCE_MIN, MT_REDUCE_MAX};
-    mt_kernel *k = compile(&d, (mt_kernel_spec){1, 0, 3, d.x, NULL, red, how});
+    mt_kernel *k = compile(&d, (mt_kernel_spec){1, 0, 3, d.x, NULL, red, how, false});
     double *scratch = mt_alloc(mt_kernel_scratch(k), 8), a[4 * MT_TILE];
     const double *from[1] = {a};
     mt_place place = {0};
@@ -136,7 +136,7 @@ static void leaves_know_their_place(void **state) {
     noise = mt_build_keep(&d.b, st, noise);
     const mt_expr *kx = mt_build_wave(&d.b, 0), *ky = mt_build_wave(&d.b, 1),
                   *out[4] = {x, y, noise, bin(&d, MT_ADD_OP, kx, ky)};
-    mt_kernel *k = compile(&d, (mt_kernel_spec){0, 4, 0, NULL, out, NULL, NULL});
+    mt_kernel *k = compile(&d, (mt_kernel_spec){0, 4, 0, NULL, out, NULL, NULL, false});
     enum { N = 2 * MT_TILE + 3 };
     static double v[4][N], wave[N], expected[N];
     double *scratch = mt_alloc(mt_kernel_scratch(k), 8), *to[4] = {v[0], v[1], v[2], v[3]};
@@ -164,12 +164,12 @@ static void polynomials_are_one_instruction(void **state) {
         bin(&d, MT_ADD_OP,
             bin(&d, MT_SUB_OP, bin(&d, MT_MUL_OP, num(&d, 2), c), bin(&d, MT_MUL_OP, num(&d, 6), c2)),
             bin(&d, MT_MUL_OP, num(&d, 4), c3));
-    mt_kernel *k = compile(&d, (mt_kernel_spec){1, 1, 0, d.x, &f, NULL, NULL});
+    mt_kernel *k = compile(&d, (mt_kernel_spec){1, 1, 0, d.x, &f, NULL, NULL, false});
     mt_kernel_print(k, text, sizeof text);
     assert_string_equal(text, "r0 = poly3([a]; 0, 2, -6, 4)\nout0 = r0\n");
     assert_int_equal(mt_kernel_instructions(k), 1);
     mt_kernel_free(&k);
-    mt_kernel_spec spec = {1, 1, 0, d.x, &d.x[1], NULL, NULL};
+    mt_kernel_spec spec = {1, 1, 0, d.x, &d.x[1], NULL, NULL, false};
     assert_int_equal(mt_kernel_new(&k, &spec, &d.err), MT_EINPUT);
     assert_non_null(strstr(d.err.text, "'b'"));
     close_desk(&d);
