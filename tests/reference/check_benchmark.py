@@ -5,6 +5,7 @@ transforms and the exponential Runge-Kutta scheme of Cox & Matthews (J. Comput. 
 import numpy as np
 import scipy.fft
 
+from exponential import Scheme
 from scripts import Run, close
 
 N, L, M, KAPPA, RHO = 200, 200.0, 5.0, 2.0, 5.0
@@ -55,43 +56,12 @@ class Square:
         return L * L * (bulk + KAPPA / 2 * (self.weight * self.k2 * abs(u) ** 2).sum())
 
 
-def phi(z):
-    """phi_1, phi_2, phi_3 by contour means (Kassam & Trefethen, SIAM J. Sci. Comput. 26 (2005) 1214)."""
-    r = np.exp(1j * np.pi * (np.arange(1, 33) - 0.5) / 32)
-    out = [np.zeros_like(z) for _ in range(3)]
-    for w in r:
-        q = z + w
-        e = np.exp(q)
-        for i, p in enumerate(((e - 1) / q, (e - 1 - q) / q ** 2, (e - 1 - q - q * q / 2) / q ** 3)):
-            out[i] += p.real / 32
-    return out
-
-
-class Scheme:
-    """Exponential fourth-order Runge-Kutta step of length h for u' = rate u + n(u)."""
-
-    def __init__(self, rate, h):
-        z = rate * h
-        p1, p2, p3 = phi(z)
-        self.h, self.e, self.e2, self.q = h, np.exp(z), np.exp(z / 2), phi(z / 2)[0]
-        self.w = p1 - 3 * p2 + 4 * p3, 2 * p2 - 4 * p3, 4 * p3 - p2
-
-    def step(self, u, n):
-        half = self.h / 2 * self.q
-        n0 = n(u)
-        a = self.e2 * u + half * n0
-        na = n(a)
-        nb = n(self.e2 * u + half * na)
-        nc = n(self.e2 * a + half * (2 * nb - n0))
-        return self.e * u + self.h * (self.w[0] * n0 + self.w[1] * (na + nb) + self.w[2] * nc)
-
-
 def solve(mirror, times):
     """The gradient term is the linear part: with f'' in it too, the part of a spectrum that no real field has would grow."""
     s = Square(mirror)
     rate = -M * KAPPA * s.k2 ** 2
     derivative = lambda c: 2 * RHO * (c - 0.3) * (0.7 - c) * (1.0 - 2 * c)
-    nonlinear = lambda u: -M * s.k2 * s.forward(derivative(s.inverse(u)))
+    nonlinear = lambda u, t: -M * s.k2 * s.forward(derivative(s.inverse(u)))
     early, late = Scheme(rate, 0.125), Scheme(rate, 0.5)
     u, t, out = s.forward(start()), 0.0, []
     for target in times:
