@@ -246,30 +246,30 @@ def case_crystal(accuracy=1e-3):
 
 def case_ramp(accuracy=1e-3):
     """Temperature through the critical point and back"""
-    # F = int T (c ln c + (1 - c) ln(1 - c)) + 2 c (1 - c) + |grad c|^2/2, critical at T = 1; M = exp(3 (1 - 1/T)):
+    # F = int T (c ln c + (1 - c) ln(1 - c)) + 2 c (1 - c) + |grad c|^2/2, critical at T = 1; M = exp(4 - 3/T):
     # dc/dt = M(T) lap(T ln(c / (1 - c)) + 2 (1 - 2 c) - lap c)
-    # T: 1.1 for 5, down to 0.75 over 35, held for 40, up to 1.05 over 20, held for 20
-    box, times = Box((48, 45), (1.5, 1.4)), (35, 50, 110)
-    knots = (0, 5, 40, 80, 100, 120), (1.1, 1.1, 0.75, 0.75, 1.05, 1.05)
-    c0 = box.noise(6, 0.45, 0.06)
+    # T: 1.02 for 2, down to 0.75 over 9, held for 24, up to 1.05 over 15, held for 10
+    box, times = Box((48, 45), (1.5, 1.4)), (10, 35, 55)
+    knots = (0, 2, 11, 35, 50, 60), (1.02, 1.02, 0.75, 0.75, 1.05, 1.05)
+    c0 = box.noise(6, 0.45, 0.08)
     run = Run("local g = " + box.lua() + f"""
       local c = g:field("c", from_array{{ file = "c.npy" }})
-      local T = param("T", 1.1)
+      local T = param("T", 1.02)
       local m = model{{ energy = T*(c*log(c) + (1 - c)*log(1 - c)) + 2*c*(1 - c) + 0.5*gradsq(c) }}
-      m:conserve(c, {{ mobility = exp(3*(1 - 1/T)) }})
+      m:conserve(c, {{ mobility = exp(4 - 3/T) }})
       m:record{{ every = 5, T, m:energy() }}
       m:save{{ c, every = 5 }}
-      m:run{{ accuracy = {accuracy}, schedule = schedule{{ T, start = 1.1, hold{{ 5 }}, ramp{{ to = 0.75, rate = 0.01 }}, hold{{ 40 }},
-        ramp{{ to = 1.05, duration = 20 }}, hold{{ 20 }} }} }}
+      m:run{{ accuracy = {accuracy}, schedule = schedule{{ T, start = 1.02, hold{{ 2 }}, ramp{{ to = 0.75, rate = 0.03 }}, hold{{ 24 }},
+        ramp{{ to = 1.05, duration = 15 }}, hold{{ 10 }} }} }}
     """, files=[("c.npy", c0)])
 
     def nonlinear(s, t):
         temperature = np.interp(t, *knots)
         c = box.inverse(s[0])
         mu = box.forward(temperature * np.log(c / (1 - c)) - 4 * c) + box.k2 * s[0]
-        return (-np.exp(3 * (1 - 1 / temperature)) * box.k2 * mu + box.k2 ** 2 * s[0])[None]
+        return (-np.exp(4 - 3 / temperature) * box.k2 * mu + 2.5 * box.k2 ** 2 * s[0])[None]
 
-    reference = converged(box, -box.k2[None] ** 2, nonlinear, [c0], times, 0.1)
+    reference = converged(box, -2.5 * box.k2[None] ** 2, nonlinear, [c0], times, 0.05)
 
     def energy(f, t):
         c = f[0]
