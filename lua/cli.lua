@@ -17,6 +17,8 @@ mottle: heat treatments of materials that unmix, from a Lua script to a measured
   mottle plan SCRIPT [name=value ...]   what would be solved, at which scales, at what cost; nothing is run
       --into FOLDER    keep it there too: plan.txt, growth.csv and growth.svg (growth rate against wavenumber)
       --replace        replace that folder if it exists
+  mottle console                        a prompt for trying things; also lines from a pipe, up to the first error
+      --into FOLDER    what its runs leave goes there (default: nothing is written); --replace, --threads, --quiet as above
   mottle report FOLDER                  makes report.html of a run folder again
   mottle --help, mottle --version
 
@@ -148,9 +150,9 @@ local function plan_command(args)
   if ok then ok, why = use_threads(o) end
   if not ok then return usage_error(why) end
   local done = {}
-  function run.plan(m, r, options)
+  function run.plan(m, r)
     local plan = require("plan")
-    local words, kept = plan.text(m, r, options)
+    local words, kept = plan.text(m, r)
     if o.into then plan.save(core.folder(o.into, o.replace and "replace plain" or "plain"), words, kept) end
     core.write(1, words)
     require("sandbox").leaving = done
@@ -166,6 +168,15 @@ local function plan_command(args)
   return 0
 end
 
+local function console_command(args)
+  local o, rest = parse(args, { into = true, threads = true }, { replace = true, quiet = true })
+  if not o then return usage_error(rest) end
+  if rest[1] then return usage_error("console: takes no script, found '" .. rest[1] .. "'; lines come from the keyboard or a pipe") end
+  local ok, why = use_threads(o)
+  if not ok then return usage_error(why) end
+  return require("console").run(o, { tidy = tidy, code = failure_code })
+end
+
 local function report_command(args)
   local o, rest = parse(args, {}, {})
   if not o then return usage_error(rest) end
@@ -174,7 +185,7 @@ local function report_command(args)
   return 0
 end
 
-local commands = { run = run_command, plan = plan_command, report = report_command }
+local commands = { run = run_command, plan = plan_command, report = report_command, console = console_command }
 
 return function(args)
   local command = table.remove(args, 1)
@@ -189,6 +200,6 @@ return function(args)
     return 0
   end
   local f = commands[command]
-  if not f then return usage_error("unknown command '" .. command .. "'" .. text.hint(command, { "run", "plan", "report" })) end
+  if not f then return usage_error("unknown command '" .. command .. "'" .. text.hint(command, { "run", "plan", "report", "console" })) end
   return f(args)
 end

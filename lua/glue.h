@@ -28,6 +28,10 @@ glue *glue_of(lua_State *L);
 
 /* Counts the signals that ask the script to end. */
 extern volatile sig_atomic_t glue_stop;
+/* Set when one of them was not Ctrl-C: then the console ends too. */
+extern volatile sig_atomic_t glue_end;
+/* Set while a line is being typed, when there is no step to finish. */
+extern volatile sig_atomic_t glue_waiting;
 /* Whether the script is to end: asked for, and the run is not being closed already. */
 bool glue_stopping(void);
 
@@ -76,5 +80,6 @@ void glue_open_motion(lua_State *L);
 void glue_open_measure(lua_State *L);
 void glue_open_files(lua_State *L);
 void glue_open_base(lua_State *L);
+void glue_open_console(lua_State *L);
 
 #endif

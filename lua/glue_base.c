@@ -11,7 +11,7 @@
 
 #include "core/base/memory.h"
 
-volatile sig_atomic_t glue_stop;
+volatile sig_atomic_t glue_stop, glue_end, glue_waiting;
 static bool closing; /* ledger and report are being written: a first signal waits for them */
 
 bool glue_stopping(void) {

@@ -20,9 +20,9 @@ extern const struct {
  * the program at once: files are whole all the same, since each is written under another name first. */
 static void on_signal(int number) {
     static const char text[] = "\nstopping after this step; once more to end at once\n";
-    (void)number;
+    if (number != SIGINT) glue_end = 1;
     if (glue_stop++) _exit(130);
-    if (isatty(2)) (void)!write(2, text, sizeof text - 1);
+    if (isatty(2) && !glue_waiting) (void)!write(2, text, sizeof text - 1);
 }
 
 /* Scripts that never come back to us are interrupted here: every 10000 instructions, in every coroutine. */
@@ -56,6 +56,7 @@ static void close_search(lua_State *L) {
     lua_newtable(L);
     glue_open_base(L), glue_open_formula(L), glue_open_space(L);
     glue_open_motion(L), glue_open_measure(L), glue_open_files(L);
+    glue_open_console(L);
     lua_setfield(L, -2, "core");
     lua_pop(L, 2);
 }

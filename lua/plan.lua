@@ -115,11 +115,11 @@ local function stages_text(out, m, run, means, real)
 end
 
 -- A short run tells what a step costs on this machine, on this grid.
-local function cost_text(out, m, real)
+local function cost_text(out, m, real, still)
   local bytes = core.bytes(m.core)
   local _, _, installed = core.memory()
   out[#out + 1] = string.format("  memory %.4g MB of %.4g GB installed%s", bytes / 1e6, installed / 1e9, bytes > 0.9 * installed and "   WARNING: this will not fit" or "")
-  if bytes > 0.5 * installed then return end
+  if still or bytes > 0.5 * installed then return end
   local ok = pcall(function()
     core.start(m.core, { step = 1e-30 }, m.time)
   end)
@@ -134,8 +134,8 @@ local function cost_text(out, m, real)
   if ok and n > 0 then out[#out + 1] = string.format("  one step takes about %s here (%d threads)", core.time_text((core.clock() - began) / n), require("run").threads) end
 end
 
----The plan of a run as text.
-function M.text(m, run)
+---The plan of a run as text. still: without a trial of steps, which leaves traces in a model that is to run later.
+function M.text(m, run, still)
   local real = units.used
   local out = {}
   local g = m.grid
@@ -162,7 +162,7 @@ function M.text(m, run)
   out[#out + 1] = "  " .. table.concat(names, ", ")
   stages_text(out, m, run, means, real)
   out[#out + 1] = "Cost"
-  cost_text(out, m, real)
+  cost_text(out, m, real, still)
   return table.concat(out, "\n") .. "\n", out.kept
 end
 

@@ -9,7 +9,8 @@ local inputs = require "input"
 local formula = require "formula"
 local report = require "report"
 
--- What the program says about where things go; filled by cli.
+-- What the program says about where things go; filled by cli. Without a folder (the console) runs leave their rows in memory
+-- and nothing else.
 local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {}, warnings = {} }
 
 local clock_model
@@ -54,6 +55,12 @@ local function open_ledger(m, total)
   choose_time_unit(total)
   local head = { { "time", time_unit, false }, { "stage", "", true }, { "step", time_unit, false } }
   for _, c in ipairs(m.recorded.columns) do head[#head + 1] = { c.name, c.param and models.param_unit(c.param) or measure.unit(c), false } end
+  rawset(m, "ledger_head", head)
+  rawset(m, "rows", {})
+  if not M.folder then
+    rawset(m, "ledger", true)
+    return
+  end
   local name = "ledger.csv"
   if M.ledger_model and M.ledger_model ~= m then
     name = "tables/ledger-" .. (#M.runs + 1) .. ".csv"
@@ -61,8 +68,6 @@ local function open_ledger(m, total)
   end
   M.ledger_model = M.ledger_model or m
   rawset(m, "ledger", core.table(M.folder, name, head))
-  rawset(m, "ledger_head", head)
-  rawset(m, "rows", {})
   M.runs[#M.runs + 1] = #M.runs == 0 and m or { ledger = m.ledger } -- the report tells the first model; the others may be collected
 end
 
@@ -75,7 +80,7 @@ local function record(m, stage)
     local v = c.value()
     row[i + 3] = (type(v) == "number" and v == v) and v or false
   end
-  core.row(m.ledger, row)
+  if M.folder then core.row(m.ledger, row) end
   m.rows[#m.rows + 1] = row
 end
 
@@ -91,7 +96,7 @@ local function next_file(pattern, name)
 end
 
 local function draw(m, p, stage)
-  if p.last == m.time then return end
+  if p.last == m.time or not M.folder then return end
   p.last = m.time
   local f, g = measure.values(p.e, "picture")
   local name = next_file("pictures/%s-%04d.png", p.name)
@@ -102,7 +107,7 @@ local function draw(m, p, stage)
 end
 
 local function save(m, p)
-  if p.last == m.time then return end
+  if p.last == m.time or not M.folder then return end
   p.last = m.time
   local f = measure.values(p.e, "save")
   core.write_array(M.folder, next_file("fields/%s-%04d.npy", p.name), f)
@@ -250,7 +255,7 @@ local function advance(m, run)
     local stage, ends = stage_ending(run, m.time)
     happen(m, run, stage, ends)
     if ends or m.time >= run.t1 then note_stage(m, run, stage) end
-    report.refresh(M)
+    if M.folder then report.refresh(M) end
   end
 end
 
@@ -281,7 +286,7 @@ local function stops_cleanly(m, f)
   if ok then return end
   local state = core.state(m.core)
   M.stopped_at = state.time
-  if not core.stopped() then report.finish(M, tostring(message)) end -- on a stop, the command line does it
+  if M.folder and not core.stopped() then report.finish(M, tostring(message)) end -- on a stop, the command line does it
   error(message, 0)
 end
 
@@ -306,7 +311,7 @@ function M.run(m, o)
   inputs.check()
   local run = prepare(m, o)
   if M.plan then M.plan(m, run, o) end -- does not come back
-  if not M.folder then M.open_folder() end
+  if not M.folder and M.open_folder then M.open_folder() end
   local fresh = not m.started
   if fresh then
     rawset(m, "drawn", {})
@@ -315,7 +320,7 @@ function M.run(m, o)
     warn_of_matrix(m)
     rawset(m, "started", true)
     clock_model = m
-    if #m.pictures == 0 and m.grid.dim > 1 then for _, f in ipairs(m.moving) do m:picture { f } end end
+    if M.folder and #m.pictures == 0 and m.grid.dim > 1 then for _, f in ipairs(m.moving) do m:picture { f } end end
     open_ledger(m, run.t1 - run.t0)
   end
   clock_model = m
