@@ -43,6 +43,9 @@ or quit() ends.
 local ran = setmetatable({}, { __mode = "k" }) -- the model that moved the fields of a grid last
 local function time_of(g) return ran[g] and ran[g].time or 0 end
 
+-- Whole numbers without ".0": whether Lua keeps them as integers is no news here.
+local function number(x) return type(x) == "number" and string.format("%.14g", x) or tostring(x) end
+
 local describe
 
 local function entries(t, depth)
@@ -67,21 +70,22 @@ local function measured(m)
   local v = m.value()
   if v == nil or v ~= v then return m.name .. " has no value now" end
   local unit = measure.unit(m)
-  return m.name .. " = " .. tostring(v) .. (unit ~= "" and " " .. unit or "")
+  return m.name .. " = " .. number(v) .. (unit ~= "" and " " .. unit or "")
 end
 
 local in_words = {
   measurement = measured,
   field = function(f) return show.line(f, time_of(select(2, measure.values(f, "console")))) end,
-  param = function(p) return core.param_name(p) .. " = " .. tostring(core.param_value(p, measure.clock())) end,
+  param = function(p) return core.param_name(p) .. " = " .. number(core.param_value(p, measure.clock())) end,
   expression = function(e)
     local v = core.number(e, measure.clock())
     local words = tostring(e)
-    return v and words ~= tostring(v) and words .. " = " .. tostring(v) or words
+    return v and words ~= number(v) and words .. " = " .. number(v) or words
   end,
   grid = function(g) return "grid of " .. table.concat(g.cells, " x ") .. " cells, spacing " .. table.concat(g.spacing, " x ") end,
   model = function(m) return "model that moves " .. names_of(m.moving) .. ", time " .. text.time(m.time, units.used) end,
   vector = tostring,
+  number = number,
   string = function(s, depth) return depth > 0 and string.format("%q", s) or s end,
   table = function(t, depth)
     if depth >= 2 or getmetatable(t) then return "{...}" end
@@ -109,6 +113,9 @@ local function plan(m)
   check_model(m, "plan")
   m:settle()
   core.write(1, require("plan").text(m, {}, true))
+  if #m.still > 0 then
+    core.write(1, "Taken as fields that do not move: " .. names_of(m.still) .. ". Should one move, make the model anew and say how before plan(m).\n")
+  end
 end
 
 -- Rows of a ledger that tell its course: at most `most`, the first and the last among them.

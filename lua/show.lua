@@ -112,13 +112,14 @@ end
 
 local function whole(x) return math.max(1, math.min(10000, math.floor(x + 0.5))) end
 
--- Dots across and down for a box, in its proportions. A dot is one column wide and `tall` columns high. Cells that are enlarged
--- become whole numbers of dots where they are square.
+-- Dots across and down for a box, in its proportions. A dot is one column wide and `tall` columns high. Square cells that have
+-- room for it become whole numbers of dots; high dots take two cells at one column each.
 local function proportions(g, columns, rows, tall, width)
   local lx, ly, hx = g.length[1], g.length[2], g.spacing[1]
   if width then return whole(width), whole(width * ly / lx / tall) end
   local scale = math.min(columns / lx, rows * tall / ly)
-  local cell = math.floor(scale * hx / tall + 1e-9) * tall
+  local columns_each = math.floor(scale * hx + 1e-9)
+  local cell = columns_each >= tall and columns_each // tall * tall or columns_each
   if cell >= 1 and hx == g.spacing[2] then scale = cell / hx end
   return whole(lx * scale), whole(ly * scale / tall)
 end
