@@ -122,7 +122,7 @@ need("Fastest wavelength 8.886" in out and "one step takes" not in out, f"plan(m
 need(re.search(r"^time 100 after \d+ steps in .*; energy ", out, re.M) and re.search(r"^time 150 after \d+ steps", out, re.M), f"summaries: {out}")
 need("\n150\n" in out and "\nmean(c) = 0.3\n" in out, f"the time goes on, new values are taken: {out}")
 rows = [line.split() for line in out[out.index("wavelength(c)\n"):].splitlines()[1:17]]
-need("(16 of 201 rows)" in out and rows[0][0] == "0" and rows[-1][0] == "150", f"the ledger: {out}")
+need(re.search(r"^\(16 of 1\d\d rows\)$", out, re.M) and rows[0][0] == "0" and rows[-1][0] == "150", f"the ledger: {out}")
 quiet = piped(shortest + "m:run{ duration = 100 }\nm:run{ duration = 50 }\nm:energy()\n", "--quiet")
 need(re.fullmatch(r"energy = \d+\.\d+\n", quiet[0]) and quiet[1] == "", f"--quiet: {quiet}")
 out, err = piped(shortest + "m:picture{ c }\nm:run{ duration = 1 }\nm:run{ duration = 1 }")
