@@ -50,13 +50,45 @@ static int peaks(lua_State *L) {
     return 1;
 }
 
+static int otsu(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    lua_pushnumber(L, mt_otsu_level(f->grid, f->values));
+    return 1;
+}
+
 static int phase_fraction(lua_State *L) {
     mt_field *f = glue_field(L, 1);
     lua_pushnumber(L, mt_phase_fraction(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3)));
     return 1;
 }
 
-/* domains(field, level, above, full) */
+static void push_domains(lua_State *L, const mt_domains *d) {
+    lua_newtable(L);
+    set(L, "count", (double)d->count);
+    set(L, "largest", d->largest);
+    set(L, "mean", d->mean);
+    set(L, "total", d->total);
+    set(L, "mean_diameter", d->mean_diameter);
+    set(L, "mean_aspect", d->mean_aspect);
+    set(L, "density", d->density);
+    set_list(L, "sizes", d->count, d->size);
+    set_list(L, "diameters", d->count, d->diameter);
+    set_list(L, "aspects", d->count, d->aspect);
+    set_list(L, "centroids", 3 * d->count, d->count ? d->centroid[0] : NULL);
+    set_list(L, "axes", 3 * d->count, d->count ? d->axis[0] : NULL);
+    set_list(L, "directions", 3 * d->count, d->count ? d->direction[0] : NULL);
+    lua_pushinteger(L, d->any_percolates);
+    lua_setfield(L, -2, "percolates");
+    lua_createtable(L, (int)d->count, 0);
+    for (size_t i = 0; i < d->count; i++) {
+        lua_pushinteger(L, d->percolates[i]);
+        lua_rawseti(L, -2, (lua_Integer)i + 1);
+    }
+    lua_setfield(L, -2, "around");
+}
+
+/* domains(field, level, above, full) -> sizes etc. by domain; centroids, axes and directions three numbers a
+ * domain; percolates and around bits of axes */
 static int domains(lua_State *L) {
     mt_error err = {0};
     mt_field *f = glue_field(L, 1);
@@ -64,12 +96,7 @@ static int domains(lua_State *L) {
     mt_status st = mt_domains_find(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3),
                                    lua_toboolean(L, 4), NULL, &d, &err);
     glue_check(L, st, &err);
-    lua_newtable(L);
-    set(L, "count", (double)d.count);
-    set(L, "largest", d.largest);
-    set(L, "mean", d.mean);
-    set(L, "total", d.total);
-    set_list(L, "sizes", d.count, d.size);
+    push_domains(L, &d);
     mt_domains_free(&d);
     return 1;
 }
@@ -135,9 +162,16 @@ static int fit_cubic(lua_State *L) {
 
 void glue_open_measure(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"statistics", statistics}, {"peaks", peaks},         {"phase_fraction", phase_fraction},
-        {"domains", domains},       {"interface", interface}, {"structure", structure},
-        {"fit_power", fit_power},   {"fit_cubic", fit_cubic}, {NULL, NULL},
+        {"statistics", statistics},
+        {"peaks", peaks},
+        {"otsu", otsu},
+        {"phase_fraction", phase_fraction},
+        {"domains", domains},
+        {"interface", interface},
+        {"structure", structure},
+        {"fit_power", fit_power},
+        {"fit_cubic", fit_cubic},
+        {NULL, NULL},
     };
     luaL_setfuncs(L, functions, 0);
 }

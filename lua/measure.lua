@@ -3,11 +3,22 @@ local core = require "core"
 local options = require "options"
 local grids = require "grid"
 local units = require "unit"
+local text = require "text"
 
 local M = {}
 
 local Measurement = { kind = "measurement" }
-Measurement.__index = Measurement
+M.Measurement = Measurement
+
+-- What a measurement may hold without being one of its parts.
+local own = { name = true, value = true, unit = true, raw = true, power = true, param = true, parts = true, whole = true, columns = true, rows = true }
+
+---`domains(c).mean_diameter` is the measurement of that part.
+Measurement.__index = function(m, key)
+  local v = rawget(Measurement, key)
+  if v ~= nil or own[key] or not rawget(m, "parts") or type(key) ~= "string" then return v end
+  return M.part(m, key)
+end
 
 ---A measurement under another name in the ledger.
 function Measurement:as(name)
@@ -45,10 +56,12 @@ function M.values(e, what)
   return f, g
 end
 
-local function label(e)
+---A short name for what is measured.
+function M.label(e)
   local t = tostring(e)
   return #t <= 40 and t or t:sub(1, 37) .. "..."
 end
+local label = M.label
 
 -- Lengths are shown in nm, areas in nm^2 in runs in real units.
 local function length_unit(power)
@@ -91,60 +104,127 @@ function M.amplitude(e)
   return make("amplitude(" .. label(e) .. ")", function() return core.peaks((M.values(e, "amplitude"))).amplitude end)
 end
 
-local level_options = { { "level", "number" }, { "above", "boolean", default = true }, { "full", "boolean", default = false } }
+-- --- levels -----------------------------------------------------------------------------------------------------------------
 
-local function level_of(f, o) return o.level or core.peaks(f).level end
+local function check_level(what, level)
+  if type(level) == "number" and level == level then return end
+  if level == "midway" or level == "otsu" then return end
+  core.fail(string.format("%s: option 'level' has to be a number, \"midway\" (between the composition peaks) or \"otsu\", found %s", what,
+    type(level) == "string" and '"' .. level .. '"' or type(level) == "number" and tostring(level) or options.kind(level)))
+end
+
+local function check_side(what, side)
+  if side == "above" or side == "below" then return end
+  core.fail(string.format("%s: option 'side' has to be \"above\" or \"below\", found \"%s\"", what, side))
+end
+
+local level_option = { "level", "any", default = "midway" }
+local side_option = { "side", "string", default = "above" }
+
+---Options of a measurement of one phase: level, side, and those in `more`. `above` is side as a boolean.
+---@param without_side boolean|nil for measurements of both phases alike
+function M.phase_options(t, what, more, without_side)
+  local specs = without_side and { level_option } or { level_option, side_option }
+  for _, s in ipairs(more or {}) do specs[#specs + 1] = s end
+  local o = options.read(t or {}, what, specs)
+  check_level(what, o.level)
+  if not without_side then check_side(what, o.side) end
+  o.above = o.side == "above"
+  return o
+end
+
+---The level asked for, in the values of f.
+function M.level_of(f, o)
+  if type(o.level) == "number" then return o.level end
+  return o.level == "otsu" and core.otsu(f) or core.peaks(f).level
+end
+
+-- --- measurements with parts --------------------------------------------------------------------------------------------------
+
+-- While a row is filled the fields stand still, and parts of one measurement share its work.
+local shared
+
+---Runs f; measurements with parts are evaluated at most once within.
+function M.together(f)
+  shared = {}
+  local ok, message = pcall(f)
+  shared = nil
+  if not ok then error(message, 0) end
+end
+
+local function known(v)
+  if type(v) == "number" and v ~= v then return nil end
+  return v
+end
+
+---A measurement with parts. t: name; all: function() -> table in SI with an entry per part; parts: list of { name, power of length };
+---main: the part it is in a ledger; columns: of its table, list of { name, power of length, is text }; rows: function(all) -> rows.
+function M.make_whole(t)
+  local m = setmetatable({ name = t.name, unit = "", parts = {}, columns = t.columns, rows = t.rows }, Measurement)
+  for _, p in ipairs(t.parts) do m.parts[p[1]] = p[2] or 0 end
+  m.raw = t.all
+  m.whole = function()
+    if not shared then return t.all() end
+    if not shared[m.whole] then shared[m.whole] = t.all() end
+    return shared[m.whole]
+  end
+  m.power = m.parts[t.main]
+  m.value = function()
+    local v = known(m.whole()[t.main])
+    return v and v / length_unit(m.power)
+  end
+  return m
+end
+
+---A part of a measurement as a measurement of its own.
+function M.part(m, key)
+  local power = m.parts[key]
+  if not power then
+    core.fail(string.format("%s has no part '%s'%s (parts: %s)", m.name, key, text.hint(key, text.keys(m.parts)), table.concat(text.keys(m.parts), ", ")))
+  end
+  return lengths(m.name .. "." .. key, nil, power, function() return known(m.whole()[key]) end)
+end
+
+---Columns of a measurement's table with their units, after time and stage.
+function M.table_head(m)
+  local head = {}
+  for i, c in ipairs(m.columns) do
+    local _, u = length_unit(c[2] or 0)
+    head[i] = { c[1], u, c[3] or false }
+  end
+  return head
+end
+
+---Rows of a measurement's table now, in the units of its head.
+function M.table_rows(m)
+  local list = m.rows(m.whole())
+  for _, row in ipairs(list) do
+    for i, c in ipairs(m.columns) do
+      local v = row[i]
+      if type(v) == "number" then row[i] = v == v and v / length_unit(c[2] or 0) end
+    end
+  end
+  return list
+end
 
 ---Fraction of cells above (or not above) the level.
 function M.phase_fraction(e, t)
-  local o = options.read(t or {}, "phase_fraction", level_options)
+  local o = M.phase_options(t, "phase_fraction")
   M.values(e, "phase_fraction")
   return make("phase_fraction(" .. label(e) .. ")", function()
     local f = M.values(e, "phase_fraction")
-    return core.phase_fraction(f, level_of(f, o), o.above)
+    return core.phase_fraction(f, M.level_of(f, o), o.above)
   end)
-end
-
----Domains above (or not above) the level: a table { count, largest, mean, total, sizes } from now(); their number in a ledger.
-function M.domains(e, t)
-  local o = options.read(t or {}, "domains", level_options)
-  M.values(e, "domains")
-  local function all()
-    local f = M.values(e, "domains")
-    return core.domains(f, level_of(f, o), o.above, o.full)
-  end
-  local m = make("domains(" .. label(e) .. ")", function() return all().count end)
-  m.raw = all
-  return m
-end
-
----Number of domains.
-function M.domain_count(e, t)
-  local m = M.domains(e, t)
-  m.raw, m.name = nil, "domain_count(" .. label(e) .. ")"
-  return m
 end
 
 ---Length (2-D), area (3-D) or number (1-D) of the interface at the level.
 function M.interface(e, t)
-  local o = options.read(t or {}, "interface", { { "level", "number" } })
+  local o = M.phase_options(t, "interface", nil, true)
   local _, g = M.values(e, "interface")
   return lengths("interface(" .. label(e) .. ")", e, g.dim - 1, function()
     local f = M.values(e, "interface")
-    return core.interface(f, level_of(f, o))
+    return core.interface(f, M.level_of(f, o))
   end)
-end
-
----Structure factor: a table { k, s, modes, wavelength, peak, variance } from now().
-function M.structure_factor(e)
-  M.values(e, "structure_factor")
-  local function all()
-    local f, g = M.values(e, "structure_factor")
-    return core.structure(f, g.core)
-  end
-  local m = lengths("peak_wavelength(" .. label(e) .. ")", e, 1, function() return all().peak end)
-  m.raw = all
-  return m
 end
 
 -- In white noise the highest shell of the structure factor stands little above the others; a wave worth a wavelength stands out.
@@ -175,7 +255,7 @@ function M.unit(m)
   return m.unit
 end
 
----Present value of a measurement, in SI: a number, a table for domains and structure_factor, or nil.
+---Present value of a measurement, in SI: a number, a table for those with parts, or nil.
 function M.now(m)
   if core.is_expr(m) then
     local v = core.number(m, M.clock and M.clock() or 0)

@@ -34,7 +34,7 @@ function M.model(t)
   end
   if o.energy and not core.dim(o.energy) then core.fail("model: the energy contains no field") end
   local m = { energy_density = o.energy or false, moving = {}, still = {}, given = {}, every_hooks = {}, at_hooks = {}, when_hooks = {}, pictures = {},
-    saves = {}, recorded = false, started = false, line = core.where(), last_record = false, last_stage = false, ledger = false,
+    saves = {}, tabulations = {}, recorded = false, started = false, line = core.where(), last_record = false, last_stage = false, ledger = false,
     ledger_head = {}, rows = {}, drawn = {}, stages = {}, schedule = false, wall = 0 }
   if o.energy then
     m.grid = grids.find(o.energy)
@@ -178,6 +178,19 @@ function Model:save(t)
   for i = 1, #t do
     local what = o.name or (core.kind(t[i]) == "field" and core.field_name(t[i])) or ("formula" .. (#self.saves + 1))
     self.saves[#self.saves + 1] = { e = t[i], every = o.every, name = what }
+  end
+end
+
+---m:tabulate{ domains(c), structure_factor(c), every = 1*hour }: distributions, each into a table of its own in tables/
+function Model:tabulate(t)
+  check_self(self, "tabulate")
+  local o = options.read(t, "tabulate", { { "every", "positive" } }, true)
+  if self.started then core.fail("tabulate: has to stand before the first m:run") end
+  if #t == 0 then core.fail("tabulate: expected measurements with a table first, as domains(c) or structure_factor(c)") end
+  for i = 1, #t do
+    if not measure.is(t[i]) then core.fail("tabulate: expected measurements, found " .. options.kind(t[i])) end
+    if not t[i].columns then core.fail("tabulate: " .. t[i].name .. " is one number, without a table; put it into m:record") end
+    self.tabulations[#self.tabulations + 1] = { measurement = t[i], every = o.every, last = false }
   end
 end
 

@@ -51,6 +51,8 @@ function M.data(run, failure)
   for i, c in ipairs(m.ledger_head) do d.columns[i] = { name = c[1], unit = c[2], text = c[3] } end
   d.pictures = {}
   for i, p in ipairs(m.drawn) do d.pictures[i] = { file = p.file, title = p.title, name = p.name } end
+  d.tables = {}
+  for i, p in ipairs(run.tables) do d.tables[i] = { file = p.file, measurement = p.measurement.name } end
   d.state = core.state(m.core)
   d.wall_time = core.clock() - run.began
   d.dim = m.grid.dim

@@ -11,7 +11,7 @@ local report = require "report"
 
 -- What the program says about where things go; filled by cli. Without a folder (the console) runs leave their rows in memory
 -- and nothing else.
-local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {}, warnings = {} }
+local M = { folder = nil, path = nil, quiet = false, script = nil, script_text = nil, threads = 1, first = nil, runs = {}, tables = {}, warnings = {} }
 
 local clock_model
 measure.clock = function()
@@ -76,12 +76,48 @@ local function record(m, stage)
   rawset(m, "last_record", m.time)
   rawset(m, "last_stage", stage)
   local row = { m.time / time_scale, stage, core.state(m.core).step / time_scale }
-  for i, c in ipairs(m.recorded.columns) do
-    local v = c.value()
-    row[i + 3] = (type(v) == "number" and v == v) and v or false
-  end
+  measure.together(function()
+    for i, c in ipairs(m.recorded.columns) do
+      local v = c.value()
+      row[i + 3] = (type(v) == "number" and v == v) and v or false
+    end
+  end)
   if M.folder then core.row(m.ledger, row) end
   m.rows[#m.rows + 1] = row
+end
+
+-- --- tables of distributions ---------------------------------------------------------------------------------------------------
+
+local taken = {}
+local function table_file(name)
+  local base, n = name:gsub("[^%w%-]+", "_"):gsub("^_+", ""):gsub("_+$", ""), 1
+  if base == "" then base = "table" end
+  local file = base
+  while taken[file] do file, n = base .. "-" .. (n + 1), n + 1 end
+  taken[file] = true
+  return "tables/" .. file .. ".csv"
+end
+
+local function open_tables(m)
+  if #m.tabulations == 0 then return end
+  core.sub_folder(M.folder, "tables")
+  for _, p in ipairs(m.tabulations) do
+    p.head = { { "time", time_unit, false }, { "stage", "", true } }
+    for _, c in ipairs(measure.table_head(p.measurement)) do p.head[#p.head + 1] = c end
+    p.file = table_file(p.measurement.name)
+    p.table = core.table(M.folder, p.file, p.head)
+    M.tables[#M.tables + 1] = p
+  end
+end
+
+local function tabulate(m, p, stage)
+  if p.last == m.time then return end
+  p.last = m.time
+  for _, row in ipairs(measure.table_rows(p.measurement)) do
+    local cells = { m.time / time_scale, stage }
+    for i = 1, #p.head - 2 do cells[i + 2] = row[i] or false end
+    core.row(p.table, cells)
+  end
 end
 
 -- --- pictures and fields ------------------------------------------------------------------------------------------------------
@@ -170,6 +206,7 @@ local function next_event(m, run, time)
   sooner_beat(m.recorded.every)
   for _, p in ipairs(m.pictures) do sooner_beat(p.every) end
   for _, p in ipairs(m.saves) do sooner_beat(p.every) end
+  for _, p in ipairs(m.tabulations) do sooner_beat(p.every) end
   for _, h in ipairs(m.every_hooks) do sooner_beat(h.time) end
   return t
 end
@@ -205,6 +242,9 @@ local function happen(m, run, stage, stage_ends)
   end
   for _, p in ipairs(m.saves) do
     if last or due(p.every) then save(m, p) end
+  end
+  for _, p in ipairs(m.tabulations) do
+    if last or stage_ends or due(p.every) then tabulate(m, p, stage) end
   end
   for _, h in ipairs(m.every_hooks) do if due(h.time) then h.f(m) end end
   call_at_hooks(m)
@@ -322,6 +362,7 @@ function M.run(m, o)
     clock_model = m
     if M.folder and #m.pictures == 0 and m.grid.dim > 1 then for _, f in ipairs(m.moving) do m:picture { f } end end
     open_ledger(m, run.t1 - run.t0)
+    open_tables(m)
   end
   clock_model = m
   M.current = m
@@ -332,6 +373,7 @@ function M.run(m, o)
     if fresh then
       record(m, stage)
       for _, p in ipairs(m.pictures) do draw(m, p, stage) end
+      for _, p in ipairs(m.tabulations) do tabulate(m, p, stage) end
       for _, p in ipairs(m.saves) do
         if p.every then save(m, p) else measure.values(p.e, "save") end -- what cannot be evaluated should fail now, not at the end
       end
@@ -350,6 +392,7 @@ function M.close(failure)
   for _, m in ipairs(M.runs) do
     if m.ledger then core.close_table(m.ledger) end
   end
+  for _, p in ipairs(M.tables) do core.close_table(p.table) end
   report.finish(M, failure)
 end
 

@@ -5,6 +5,7 @@ local text = require "text"
 local formula = require "formula"
 local grids = require "grid"
 local measure = require "measure"
+local microstructure = require "microstructure"
 local schedule = require "schedule"
 local units = require "unit"
 local inputs = require "input"
@@ -108,8 +109,9 @@ function M.make(folder, model)
   for _, name in ipairs { "exp", "log", "sqrt", "sin", "cos", "tanh", "abs", "min", "max", "where", "above", "below", "dx", "dy", "dz",
     "grad", "gradsq", "laplacian", "div", "dot", "filter", "noise", "param", "derivative", "time" } do env[name] = formula[name] end
   for _, name in ipairs { "grid", "wave", "place", "from_array", "from_image", "set" } do env[name] = grids[name] end
-  for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "domains", "domain_count",
-    "interface", "wavelength", "structure_factor", "now" } do env[name] = measure[name] end
+  for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "interface",
+    "wavelength", "now" } do env[name] = measure[name] end
+  for _, name in ipairs { "domains", "domain_count", "structure_factor" } do env[name] = microstructure[name] end
   for _, name in ipairs { "schedule", "quench", "ramp", "hold" } do env[name] = schedule[name] end
   env.clock = core.clock -- wall time in seconds, for timing; not for decisions that a run should repeat
   env.unit, env.degC, env.input, env.model = units.unit, units.degC, inputs.input, model

@@ -5,6 +5,7 @@
 #include <string.h>
 
 #include "core/base/memory.h"
+#include "core/measure/tensor_inside.h"
 
 static const double pi = 3.14159265358979323846;
 
@@ -91,8 +92,11 @@ typedef struct piece {
     int32_t winding[3]; /* boxes by which this piece lies beyond its parent */
     uint8_t walls, percolates;
     int64_t cells;
-    double sum[3]; /* of cell numbers along each axis */
+    double sum[3];    /* of cell numbers along each axis */
+    double square[6]; /* of their products: xx, yy, zz, xy, yz, zx */
 } piece;
+
+static const int first_of[6] = {0, 1, 2, 0, 1, 2}, second_of[6] = {0, 1, 2, 1, 2, 0};
 
 static void gather_pieces(const mt_grid *g, const int32_t *label, piece *p) {
     int at[3];
@@ -103,6 +107,7 @@ static void gather_pieces(const mt_grid *g, const int32_t *label, piece *p) {
                 if (!l) continue;
                 piece *q = &p[l - 1];
                 q->cells++;
+                for (int m = 0; m < 6; m++) q->square[m] += (double)at[first_of[m]] * at[second_of[m]];
                 for (int a = 0; a < g->dim; a++) {
                     q->sum[a] += at[a];
                     if (g->wall[a] != MT_MIRROR) continue;
@@ -192,6 +197,19 @@ static void join_across(const mt_grid *g, bool full, const int32_t *label, piece
 /* --- domains ----------------------------------------------------------------------------------------------
  */
 
+/* Adds piece q, moved by w boxes, to its root. */
+static void add_moved(const mt_grid *g, const piece *q, const int w[3], piece *root) {
+    double d[3], cells = (double)q->cells;
+    for (int a = 0; a < 3; a++) d[a] = (double)w[a] * g->n[a];
+    root->cells += q->cells;
+    root->walls |= q->walls;
+    for (int a = 0; a < 3; a++) root->sum[a] += q->sum[a] + cells * d[a];
+    for (int m = 0; m < 6; m++) {
+        int a = first_of[m], b = second_of[m];
+        root->square[m] += q->square[m] + q->sum[a] * d[b] + q->sum[b] * d[a] + cells * d[a] * d[b];
+    }
+}
+
 /* Numbers the roots, then adds every piece, unwound, to its root. */
 static size_t gather_domains(const mt_grid *g, size_t pieces, piece *p) {
     int32_t n = 0;
@@ -200,9 +218,7 @@ static size_t gather_domains(const mt_grid *g, size_t pieces, piece *p) {
         int32_t r = piece_root(p, (int32_t)i, w); /* r <= i: its number is known */
         p[i].domain = r == (int32_t)i ? n++ : p[r].domain;
         if (r == (int32_t)i) continue;
-        p[r].cells += p[i].cells;
-        p[r].walls |= p[i].walls;
-        for (int a = 0; a < 3; a++) p[r].sum[a] += p[i].sum[a] + (double)p[i].cells * w[a] * g->n[a];
+        add_moved(g, &p[i], w, &p[r]);
     }
     return (size_t)n;
 }
@@ -212,6 +228,30 @@ static double centre(const mt_grid *g, int axis, const piece *p) {
     if (axis >= g->dim) return 0;
     if (g->wall[axis] == MT_PERIODIC && (p->percolates >> axis & 1)) return NAN;
     return (x - n * floor(x / n)) * g->h[axis];
+}
+
+/* Central second moments in units of length, a cell being a box. */
+static void central_moments(const mt_grid *g, const piece *p, double m[3][3]) {
+    double n = (double)p->cells;
+    for (int i = 0; i < 6; i++) {
+        int a = first_of[i], b = second_of[i];
+        double cells = p->square[i] / n - p->sum[a] / n * (p->sum[b] / n) + (a == b ? 1.0 / 12 : 0);
+        m[a][b] = m[b][a] = a < g->dim && b < g->dim ? cells * g->h[a] * g->h[b] : 0;
+    }
+}
+
+static void shape(const mt_grid *g, const piece *p, size_t i, mt_domains *out) {
+    double m[3][3], value[3], vector[3][3];
+    bool wound = false;
+    for (int a = 0; a < g->dim; a++) wound = wound || (p->percolates >> a & 1);
+    central_moments(g, p, m);
+    mt_principal(m, value, vector);
+    double factor = g->dim == 3 ? 20 : g->dim == 2 ? 16 : 12;
+    for (int a = 0; a < 3; a++) {
+        out->axis[i][a] = a >= g->dim ? 0 : wound ? NAN : sqrt(factor * value[a]);
+        out->direction[i][a] = wound ? NAN : vector[0][a];
+    }
+    out->aspect[i] = wound ? NAN : sqrt(value[0] / value[g->dim - 1]);
 }
 
 static unsigned wall_to_wall(const mt_grid *g, const piece *p) {
@@ -225,6 +265,7 @@ static void fill(const mt_grid *g, const piece *p, size_t i, mt_domains *out) {
     out->size[i] = (double)p->cells * g->cell_volume;
     out->diameter[i] = mt_equivalent_diameter(g->dim, out->size[i]);
     for (int a = 0; a < 3; a++) out->centroid[i][a] = centre(g, a, p);
+    shape(g, p, i, out);
     out->walls[i] = p->walls;
     out->percolates[i] = (unsigned char)(p->percolates | wall_to_wall(g, p));
     out->any_percolates |= out->percolates[i];
@@ -234,16 +275,26 @@ static void fill(const mt_grid *g, const piece *p, size_t i, mt_domains *out) {
 }
 
 static mt_status make_domains(size_t count, mt_domains *out, mt_error *err) {
-    size_t each = 5 * sizeof(double) + 2;
+    size_t each = 12 * sizeof(double) + 2;
     mt_status st = mt_new(&out->block, count, each, "sizes of domains", err);
     if (st) return st;
     out->count = count;
     out->size = out->block;
     out->diameter = out->size + count;
     out->centroid = (double(*)[3])(out->diameter + count);
-    out->percolates = (unsigned char *)(out->diameter + 4 * count);
+    out->axis = out->centroid + count;
+    out->direction = out->axis + count;
+    out->aspect = out->diameter + 10 * count;
+    out->percolates = (unsigned char *)(out->aspect + count);
     out->walls = out->percolates + count;
     return MT_OK;
+}
+
+static double mean_known(size_t n, const double *v) {
+    double sum = 0, known = 0;
+    for (size_t i = 0; i < n; i++)
+        if (!isnan(v[i])) sum += v[i], known++;
+    return sum / known;
 }
 
 static mt_status measure(const mt_grid *g, size_t pieces, piece *p, mt_domains *out, mt_error *err) {
@@ -253,6 +304,8 @@ static mt_status measure(const mt_grid *g, size_t pieces, piece *p, mt_domains *
         if (p[i].parent == (int32_t)i) fill(g, &p[i], (size_t)p[i].domain, out);
     out->mean = out->count ? out->total / (double)out->count : 0;
     out->mean_diameter = out->count ? out->mean_diameter / (double)out->count : 0;
+    out->density = (double)out->count / g->volume;
+    out->mean_aspect = mean_known(out->count, out->aspect);
     return MT_OK;
 }
 

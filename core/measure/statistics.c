@@ -157,6 +157,36 @@ mt_status mt_peaks_of(const mt_grid *g, const double *a, mt_peaks *out, mt_error
     return MT_OK;
 }
 
+/* Places are in classes; the moments are those of the classes' middles. */
+static double best_bound(const double count[CLASSES]) {
+    double total = 0, moment = 0, below = 0, below_moment = 0, best = -1, first = 0, last = 0;
+    for (int c = 0; c < CLASSES; c++) total += count[c], moment += count[c] * (c + 0.5);
+    for (int c = 0; c + 1 < CLASSES; c++) {
+        below += count[c], below_moment += count[c] * (c + 0.5);
+        double above = total - below;
+        if (!(below > 0) || !(above > 0)) continue;
+        double apart = below_moment / below - (moment - below_moment) / above;
+        double between = below * above * apart * apart;
+        if (between > best) first = c + 1, best = between;
+        if (between == best) last = c + 1;
+    }
+    return 0.5 * (first + last);
+}
+
+double mt_otsu_level(const mt_grid *g, const double *a) {
+    mt_statistics st;
+    double count[CLASSES] = {0};
+    mt_statistics_of(g, a, &st);
+    double range = st.maximum - st.minimum;
+    if (range == 0) return a[0];
+    if (!(range > 0) || isinf(range)) return NAN;
+    for (size_t i = 0; i < g->cells; i++) {
+        double x = (a[i] - st.minimum) / range * CLASSES;
+        count[x < CLASSES ? (int)x : CLASSES - 1]++;
+    }
+    return st.minimum + best_bound(count) * range / CLASSES;
+}
+
 double mt_phase_fraction(const mt_grid *g, const double *a, double level, bool above) {
     size_t n = 0;
     for (size_t i = 0; i < g->cells; i++) n += a[i] > level;

@@ -41,6 +41,14 @@ typedef struct mt_peaks {
  * is common practice. References from memory. ENOMEM (6 kB). */
 MT_API mt_status mt_peaks_of(const mt_grid *grid, const double *a, mt_peaks *out, mt_error *err) MT_MUST_USE;
 
+/* The level that parts the values best into two classes: the one with the largest variance between the
+ * classes (Otsu, IEEE Trans. Syst. Man Cybern. 9 (1979) 62; from memory), over a histogram of 256 classes
+ * from minimum to maximum. The level is a bound of classes; where several do equally well (empty classes
+ * between two peaks), the middle of them. Unlike the peaks it needs no two peaks, but it moves towards the
+ * larger class where the phases are of unequal amounts. A constant field gives its value, values not finite
+ * NaN. */
+MT_API double mt_otsu_level(const mt_grid *grid, const double *a);
+
 /* Fraction of the cells with a > level (above), or of the others. By the principle of Delesse (1847) and
  * Rosiwal (1898) the area fraction of a random section is the volume fraction (from memory). Whole cells are
  * counted: the error is about (cells on the interface) / cells times 0.3 / sqrt(cells on the interface). */

@@ -36,7 +36,7 @@ near(now(mean(gradsq(c))), 0.01/2*(2*math.pi/12)^2, 1e-12, "spectral derivative"
 same(now(domain_count(c, { level = 0.5 })), 2, "two stripes")
 near(now(interface(c, { level = 0.5 })), 4*32, 1e-9, "interface")
 near(now(wavelength(c)), 12, 1.2, "wavelength, to the width of a shell"); same(#now(domains(c)).sizes, 2, "sizes")
-near(now(phase_fraction(c, { above = false })) + now(phase_fraction(c)), 1, 1e-15)
+near(now(phase_fraction(c, { side = "below" })) + now(phase_fraction(c)), 1, 1e-15)
 same(now(wavelength(g:field("noise", noise.normal{ seed = 4 }))), nil, "no wavelength in noise")
 
 -- starts

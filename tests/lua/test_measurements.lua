@@ -1,0 +1,43 @@
+-- What measurements promise in scripts: parts, levels, sides, tables; values that are known by hand.
+local function same(a, b, what)
+  if a ~= b then error(string.format("%s: %s, expected %s", what or "value", tostring(a), tostring(b)), 2) end
+end
+local function near(a, b, tolerance, what)
+  if not (a and math.abs(a - b) <= tolerance) then error(string.format("%s: %s, expected %.15g", what or "value", tostring(a), b), 2) end
+end
+local function refused(words, f, ...)
+  local ok, message = pcall(f, ...)
+  if ok or not message:find(words, 1, true) then error("expected a message with '" .. words .. "', found: " .. tostring(message), 2) end
+end
+
+-- stripes of 6 and 10 across x, once around y: cells 48 by 20 of 0.5
+local g = grid{ cells = {48, 20}, spacing = 0.5 }
+local c = g:field("c", where(above(sin(2*math.pi*(g.x - 0.1)/8), math.cos(math.pi*6/16)), 0.9, 0.1))
+
+-- domains
+local d = domains(c)
+local all = now(d)
+same(all.count, 3, "count"); same(now(d.count), 3, "part"); same(now(domain_count(c)), 3, "domain_count")
+near(all.sizes[1], 3*10, 1e-12, "size"); near(now(d.mean), 30, 1e-12, "mean size"); near(now(d.total), 90, 1e-12, "total")
+near(now(d.mean_diameter), 2*math.sqrt(30/math.pi), 1e-12, "diameter"); near(now(d.density), 3/240, 1e-15, "density")
+same(now(d.percolates_x), 0, "along x"); same(now(d.percolates_y), 1, "along y"); same(all.percolates, "y", "percolates")
+same(now(d.mean_aspect), nil, "what winds around has no shape")
+near(now(domains(c, { side = "below" }).mean), 50, 1e-12, "the other side")
+near(now(phase_fraction(c, { level = "otsu" })), 6/16, 1e-12, "otsu"); near(now(phase_fraction(c, { level = 0.95 })), 0, 0, "number")
+near(now(phase_fraction(c, { level = "midway", side = "below" })), 10/16, 1e-12, "midway")
+near(now(interface(c, { level = "otsu" })), 6*10, 0.1, "interface at Otsu's level")
+same(tostring(d.mean_diameter), "measurement domains(c).mean_diameter", "name"); same(tostring(d:as("particles")), "measurement particles", "as")
+refused("has no part 'mean_diametr'; did you mean 'mean_diameter'?", function() return d.mean_diametr end)
+refused('"midway" (between the composition peaks) or "otsu", found "middle"', domains, c, { level = "middle" })
+refused('has to be "above" or "below", found "left"', domains, c, { side = "left" })
+
+-- tables and parts in a run
+local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) }
+m:conserve(c, { mobility = 1 })
+refused("one number, without a table", function() m:tabulate{ d.count } end)
+refused("expected measurements, found field", function() m:tabulate{ c } end)
+refused("expected measurements with a table first", function() m:tabulate{ every = 1 } end)
+m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak }
+m:tabulate{ d, domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
+m:run{ duration = 3 }
+refused("before the first m:run", function() m:tabulate{ d } end)
