@@ -2,6 +2,7 @@
 #include "lua/glue.h"
 
 #include "core/base/memory.h"
+#include "core/measure/chords.h"
 #include "core/measure/domains.h"
 #include "core/measure/growth.h"
 #include "core/measure/interface.h"
@@ -101,6 +102,32 @@ static int domains(lua_State *L) {
     return 1;
 }
 
+/* chords(field, level, above) -> { mean, axes = { { mean, deviation, endless, chords, number = {...} }, ... }
+ * }
+ */
+static int chords(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_chords c;
+    mt_status st = mt_chords_find(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3), &c, &err);
+    glue_check(L, st, &err);
+    lua_newtable(L);
+    set(L, "mean", c.mean);
+    lua_createtable(L, c.dim, 0);
+    for (int a = 0; a < c.dim; a++) {
+        lua_newtable(L);
+        set(L, "mean", c.axis[a].mean);
+        set(L, "deviation", c.axis[a].deviation);
+        set(L, "endless", c.axis[a].endless);
+        set(L, "chords", c.axis[a].chords);
+        set_list(L, "number", (size_t)c.axis[a].longest, c.axis[a].number + 1);
+        lua_rawseti(L, -2, a + 1);
+    }
+    lua_setfield(L, -2, "axes");
+    mt_chords_free(&c);
+    return 1;
+}
+
 static int interface(lua_State *L) {
     mt_field *f = glue_field(L, 1);
     lua_pushnumber(L, mt_interface_measure(f->grid, f->values, luaL_checknumber(L, 2)));
@@ -167,6 +194,7 @@ void glue_open_measure(lua_State *L) {
         {"otsu", otsu},
         {"phase_fraction", phase_fraction},
         {"domains", domains},
+        {"chords", chords},
         {"interface", interface},
         {"structure", structure},
         {"fit_power", fit_power},

@@ -76,6 +76,38 @@ function M.domain_count(e, t)
   return M.domains(e, t).count:as("domain_count(" .. measure.label(e) .. ")")
 end
 
+-- --- chords -------------------------------------------------------------------------------------------------------------------
+
+local function chord_rows(g)
+  return function(c)
+    local rows = {}
+    for a = 1, g.dim do
+      for cells, n in ipairs(c.axes[a].number) do
+        if n > 0 then rows[#rows + 1] = { axis_names[a], cells * g.spacing[a], n, n / c.axes[a].chords } end
+      end
+    end
+    return rows
+  end
+end
+
+---Chords of one phase along each axis. Table: a row for each length that occurs.
+function M.chords(e, t)
+  local o = measure.phase_options(t, "chords")
+  local _, g = measure.values(e, "chords")
+  return measure.make_whole { name = "chords(" .. measure.label(e) .. ")", main = "mean",
+    all = function()
+      local f = measure.values(e, "chords")
+      local c = core.chords(f, measure.level_of(f, o), o.above)
+      for a = 1, g.dim do
+        for _, what in ipairs { "mean", "deviation", "endless" } do c[what .. "_" .. axis_names[a]] = c.axes[a][what] end
+      end
+      return c
+    end,
+    parts = join({ { "mean", 1 } }, per_axis(g.dim, "mean_", 1), per_axis(g.dim, "deviation_", 1), per_axis(g.dim, "endless_")),
+    columns = { { "axis", 0, true }, { "length", 1 }, { "chords" }, { "share" } },
+    rows = chord_rows(g) }
+end
+
 -- --- structure factor ---------------------------------------------------------------------------------------------------------
 
 local function structure_rows(s)

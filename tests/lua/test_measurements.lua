@@ -31,6 +31,12 @@ refused("has no part 'mean_diametr'; did you mean 'mean_diameter'?", function() 
 refused('"midway" (between the composition peaks) or "otsu", found "middle"', domains, c, { level = "middle" })
 refused('has to be "above" or "below", found "left"', domains, c, { side = "left" })
 
+-- chords
+local ch = chords(c)
+near(now(ch.mean_x), 3, 1e-12, "chords of the stripes"); near(now(chords(c, { side = "below" }).mean_x), 5, 1e-12, "between the stripes")
+same(now(ch.mean_y), nil, "lines without an end"); same(now(ch.endless_y), 1.0, "endless"); same(now(ch.endless_x), 0.0, "none endless")
+near(now(ch).mean, 3, 1e-12, "all axes"); near(now(ch.deviation_x), 0, 1e-6, "deviation"); same(now(ch).axes[1].number[6], 60.0, "number")
+
 -- tables and parts in a run
 local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) }
 m:conserve(c, { mobility = 1 })
@@ -38,6 +44,6 @@ refused("one number, without a table", function() m:tabulate{ d.count } end)
 refused("expected measurements, found field", function() m:tabulate{ c } end)
 refused("expected measurements with a table first", function() m:tabulate{ every = 1 } end)
 m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak }
-m:tabulate{ d, domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
+m:tabulate{ d, ch, domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
 m:run{ duration = 3 }
 refused("before the first m:run", function() m:tabulate{ d } end)
