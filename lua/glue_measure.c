@@ -8,6 +8,7 @@
 #include "core/measure/interface.h"
 #include "core/measure/statistics.h"
 #include "core/measure/structure.h"
+#include "core/measure/topology.h"
 
 static void set(lua_State *L, const char *name, double value) {
     lua_pushnumber(L, value);
@@ -128,6 +129,20 @@ static int chords(lua_State *L) {
     return 1;
 }
 
+/* topology(field, level, above, full) */
+static int topology(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    mt_topology t;
+    mt_topology_of(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3), lua_toboolean(L, 4), &t);
+    lua_newtable(L);
+    set(L, "size", t.size);
+    set(L, "boundary", t.boundary);
+    set(L, "breadth", t.breadth);
+    set(L, "euler", t.euler);
+    set(L, "density", t.euler_share / f->grid->volume);
+    return 1;
+}
+
 static int interface(lua_State *L) {
     mt_field *f = glue_field(L, 1);
     lua_pushnumber(L, mt_interface_measure(f->grid, f->values, luaL_checknumber(L, 2)));
@@ -195,6 +210,7 @@ void glue_open_measure(lua_State *L) {
         {"phase_fraction", phase_fraction},
         {"domains", domains},
         {"chords", chords},
+        {"topology", topology},
         {"interface", interface},
         {"structure", structure},
         {"fit_power", fit_power},

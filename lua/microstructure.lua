@@ -108,6 +108,25 @@ function M.chords(e, t)
     rows = chord_rows(g) }
 end
 
+-- --- topology -----------------------------------------------------------------------------------------------------------------
+
+local topology_names = { { "length", "ends" }, { "area", "perimeter" }, { "volume", "surface" } }
+
+---Minkowski functionals of one phase: area, perimeter, euler (2-D); volume, surface, mean_breadth, euler (3-D).
+function M.topology(e, t)
+  local o = measure.phase_options(t, "topology", { { "full", "boolean", default = false } })
+  local _, g = measure.values(e, "topology")
+  local size, boundary = table.unpack(topology_names[g.dim])
+  return measure.make_whole { name = "topology(" .. measure.label(e) .. ")", main = "euler",
+    all = function()
+      local f = measure.values(e, "topology")
+      local k = core.topology(f, measure.level_of(f, o), o.above, o.full)
+      return { [size] = k.size, [boundary] = k.boundary, mean_breadth = g.dim == 3 and k.breadth or nil, euler = k.euler, euler_density = k.density }
+    end,
+    parts = join({ { size, g.dim }, { boundary, g.dim - 1 }, { "euler" }, { "euler_density", -g.dim } },
+      g.dim == 3 and { { "mean_breadth", 1 } } or {}) }
+end
+
 -- --- structure factor ---------------------------------------------------------------------------------------------------------
 
 local function structure_rows(s)

@@ -189,7 +189,7 @@ function Model:tabulate(t)
   if #t == 0 then core.fail("tabulate: expected measurements with a table first, as domains(c) or structure_factor(c)") end
   for i = 1, #t do
     if not measure.is(t[i]) then core.fail("tabulate: expected measurements, found " .. options.kind(t[i])) end
-    if not t[i].columns then core.fail("tabulate: " .. t[i].name .. " is one number, without a table; put it into m:record") end
+    if not t[i].columns then core.fail("tabulate: " .. t[i].name .. " has no table; its numbers go into m:record") end
     self.tabulations[#self.tabulations + 1] = { measurement = t[i], every = o.every, last = false }
   end
 end

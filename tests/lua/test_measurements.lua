@@ -37,13 +37,28 @@ near(now(ch.mean_x), 3, 1e-12, "chords of the stripes"); near(now(chords(c, { si
 same(now(ch.mean_y), nil, "lines without an end"); same(now(ch.endless_y), 1.0, "endless"); same(now(ch.endless_x), 0.0, "none endless")
 near(now(ch).mean, 3, 1e-12, "all axes"); near(now(ch.deviation_x), 0, 1e-6, "deviation"); same(now(ch).axes[1].number[6], 60.0, "number")
 
+-- topology: three bands around the box
+local top = topology(c)
+same(now(top.euler), 0.0, "bands are rings"); near(now(top.area), 90, 1e-9, "area"); near(now(top.perimeter), 60, 3.2, "perimeter")
+local film = grid{ cells = {40, 30}, spacing = 0.5, walls = "mirror" }
+local u = film:field("u", 8 - (film.x^2 + film.y^2)^0.5)
+same(now(topology(u, { level = 0 }).euler), 1.0, "a piece in the corner"); near(now(topology(u, { level = 0 }).euler_density), 0.25/300, 1e-12, "a quarter of a disc")
+near(now(topology(u, { level = 0, side = "below" }).perimeter), math.pi*4, 0.1, "a quarter of a circle")
+same(now(topology(u, { level = 0 })).mean_breadth, nil, "no breadth in 2-D")
+local box = grid{ cells = {24, 24, 24}, spacing = 1 }
+local b = box:field("b", 8 - ((box.x - 12.1)^2 + (box.y - 12.2)^2 + (box.z - 11.9)^2)^0.5)
+local ball = topology(b, { level = 0 })
+near(now(ball.volume), 4/3*math.pi*512, 40, "volume"); near(now(ball.surface), 4*math.pi*64, 10, "surface"); near(now(ball.mean_breadth), 16, 0.3, "breadth")
+same(now(ball.euler), 1.0, "a ball")
+
 -- tables and parts in a run
 local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) }
 m:conserve(c, { mobility = 1 })
-refused("one number, without a table", function() m:tabulate{ d.count } end)
+refused("has no table; its numbers go into m:record", function() m:tabulate{ d.count } end)
+refused("has no table; its numbers go into m:record", function() m:tabulate{ top.euler } end)
 refused("expected measurements, found field", function() m:tabulate{ c } end)
 refused("expected measurements with a table first", function() m:tabulate{ every = 1 } end)
-m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak }
+m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak, top, top.perimeter, ch.mean_x }
 m:tabulate{ d, ch, domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
 m:run{ duration = 3 }
 refused("before the first m:run", function() m:tabulate{ d } end)

@@ -1,5 +1,6 @@
 """Measurements against SciPy and scikit-image on random images: labels (scipy.ndimage.label, joined across periodic walls by
-hand), level lines (skimage.measure.find_contours, marching squares of its own), the structure factor (numpy.fft)."""
+hand), level lines (skimage.measure.find_contours, marching squares of its own), the structure factor (numpy.fft), Euler numbers, Crofton perimeters,
+second moments of regions and Otsu's threshold (skimage), run lengths (NumPy)."""
 import os
 import subprocess
 import sys
@@ -8,6 +9,7 @@ import tempfile
 import numpy as np
 import scipy.fft
 import scipy.ndimage
+import skimage.filters
 import skimage.measure
 
 probe = os.path.join(os.environ["BUILD"], "probe_measure")
@@ -18,14 +20,16 @@ def run(a, walls, level):
         a.astype("<f8").tofile(f.name)
         shape = list(a.shape[::-1]) + [1] * (3 - a.ndim)
         out = subprocess.run([probe, f.name, *map(str, shape), walls, repr(level)], check=True, capture_output=True, text=True).stdout
-    values, shells = {}, []
+    values, shells, lists = {}, [], {"shape": [], "chord": []}
     for line in out.splitlines():
         words = line.split()
         if words[0] == "shell":
             shells.append([float(w) for w in words[1:]])
+        elif words[0] in lists:
+            lists[words[0]].append([float(w) for w in words[1:]])
         else:
             values[words[0]] = float(words[1])
-    return values, np.array(shells)
+    return {**values, **{k: np.array(v) for k, v in lists.items()}}, np.array(shells)
 
 
 def close(name, got, wanted, rtol, atol=0.0):
@@ -111,4 +115,56 @@ close("wavelength", v["wavelength"], 2 * np.pi * shells[:, 1].sum() / (shells[:,
 v, _ = run(a, "mmm", 0.0)
 c = scipy.fft.dctn(a - a.mean(), norm="ortho")
 close("mirror sum rule", v["sum_rule"], (c ** 2).sum() / a.size, 1e-12)
+
+# Euler characteristic of the part in the box, mirror walls being the ends of the picture.
+for seed in range(8):
+    for shape in ((17, 22), (8, 9, 10)):
+        a = smooth(shape, 0.6, seed, "nearest")
+        v, _ = run(a, "mmm", 0.05)
+        close("euler, faces", v["euler_faces"], skimage.measure.euler_number(a > 0.05, connectivity=1), 0, 1e-9)
+        close("euler, full", v["euler_full"], skimage.measure.euler_number(a > 0.05, connectivity=a.ndim), 0, 1e-9)
+
+# Crofton perimeter with four directions; axes, direction and aspect of each region; Otsu's level, whose bound of classes lies
+# half a class above the middle that scikit-image names.
+for seed in range(8):
+    a = smooth((64, 48), 3, seed, "nearest")
+    a[:2] = a[-2:] = a[:, :2] = a[:, -2:] = -0.3
+    v, _ = run(a, "mmm", 0.02)
+    close("crofton", v["boundary_faces"], skimage.measure.perimeter_crofton(a > 0.02, directions=4), 1e-12)
+    close("otsu", v["otsu"], skimage.filters.threshold_otsu(a, nbins=256) + (a.max() - a.min()) / 512, 1e-12)
+    regions = skimage.measure.regionprops(skimage.measure.label(a > 0.02, connectivity=1))
+    close("regions", len(v["shape"]), len(regions), 0)
+    for (size, longest, shortest, dx, dy), region in zip(v["shape"], regions):
+        m = region.moments_central
+        moments = np.array([[m[0, 2], m[1, 1]], [m[1, 1], m[2, 0]]]) / m[0, 0] + np.eye(2) / 12  # a cell is a square
+        value, vector = np.linalg.eigh(moments)
+        close("area", size, region.area, 1e-15)
+        close("long axis", longest, 4 * np.sqrt(value[1]), 1e-9)
+        close("short axis", shortest, 4 * np.sqrt(value[0]), 1e-9)
+        if value[1] > 1.001 * value[0]:
+            close("direction", abs(dx * vector[0, 1] + dy * vector[1, 1]), 1, 1e-9)
+
+
+def run_lengths(mask, axis, periodic):
+    """Number of runs of each length: between the places where the line changes, twice around (periodic) or doubled by reflection."""
+    number = np.zeros(2 * mask.shape[axis])
+    for line in np.moveaxis(mask, axis, -1).reshape(-1, mask.shape[axis]):
+        line = line if periodic else np.concatenate((line, line[::-1]))
+        if line.all() or not line.any():
+            continue
+        changes = np.flatnonzero(line != np.roll(line, 1))
+        lengths = np.diff(np.append(changes, changes[0] + len(line)))
+        np.add.at(number, lengths[line[changes]], 1 if periodic else 0.5)
+    return number
+
+
+for seed in range(4):
+    for walls in ("ppp", "mmm"):
+        for shape in ((20, 31), (7, 8, 9)):
+            a = smooth(shape, 0.8, seed, "wrap")
+            v, _ = run(a, walls, 0.03)
+            for axis in range(a.ndim):
+                wanted = run_lengths(a > 0.03, a.ndim - 1 - axis, walls == "ppp")
+                for _, length, n in v["chord"][v["chord"][:, 0] == axis]:
+                    close("chords", n, wanted[int(length)], 0)
 print("measurements agree")

@@ -5,10 +5,12 @@
 #include <string.h>
 
 #include "core/base/memory.h"
+#include "core/measure/chords.h"
 #include "core/measure/domains.h"
 #include "core/measure/interface.h"
 #include "core/measure/statistics.h"
 #include "core/measure/structure.h"
+#include "core/measure/topology.h"
 
 static mt_error err;
 
@@ -24,6 +26,30 @@ static void domains(const mt_grid *g, const double *a, double level, bool full) 
     printf("%s %zu\n%s_largest %.17g\n", full ? "full" : "faces", d.count, full ? "full" : "faces",
            d.largest);
     mt_domains_free(&d);
+}
+
+static void shapes(const mt_grid *g, const double *a, double level) {
+    mt_domains d;
+    must(mt_domains_find(g, a, level, true, false, NULL, &d, &err));
+    for (size_t i = 0; i < d.count; i++)
+        printf("shape %.17g %.17g %.17g %.17g %.17g\n", d.size[i], d.axis[i][0], d.axis[i][g->dim - 1],
+               d.direction[i][0], d.direction[i][1]);
+    mt_domains_free(&d);
+}
+
+static void chords(const mt_grid *g, const double *a, double level) {
+    mt_chords c;
+    must(mt_chords_find(g, a, level, true, &c, &err));
+    for (int i = 0; i < g->dim; i++)
+        for (int l = 1; l <= c.axis[i].longest; l++) printf("chord %d %d %.17g\n", i, l, c.axis[i].number[l]);
+    mt_chords_free(&c);
+}
+
+static void topology(const mt_grid *g, const double *a, double level, bool full) {
+    mt_topology t;
+    mt_topology_of(g, a, level, true, full, &t);
+    printf("euler_%s %.17g\nboundary_%s %.17g\n", full ? "full" : "faces", t.euler, full ? "full" : "faces",
+           t.boundary);
 }
 
 static void structure(mt_grid *g, const double *a) {
@@ -55,6 +81,11 @@ int main(int argc, char **argv) {
            mt_phase_fraction(g, a, level, true), mt_interface_measure(g, a, level));
     domains(g, a, level, false);
     domains(g, a, level, true);
+    topology(g, a, level, false);
+    topology(g, a, level, true);
+    printf("otsu %.17g\n", mt_otsu_level(g, a));
+    shapes(g, a, level);
+    chords(g, a, level);
     structure(g, a);
     mt_free(a);
     mt_grid_unref(&g);
