@@ -3,6 +3,7 @@
 
 #include "core/base/memory.h"
 #include "core/measure/chords.h"
+#include "core/measure/correlation.h"
 #include "core/measure/domains.h"
 #include "core/measure/growth.h"
 #include "core/measure/interface.h"
@@ -149,22 +150,69 @@ static int interface(lua_State *L) {
     return 1;
 }
 
+static mt_sweeper *sweeper_at(lua_State *L, int index) {
+    mt_error err = {0};
+    glue_grid *g = glue_grid_at(L, index);
+    if (!g->sweeper) glue_check(L, mt_sweeper_new(&g->sweeper, g->grid, glue_of(L)->pool, &err), &err);
+    return g->sweeper;
+}
+
 static int structure(lua_State *L) {
     mt_error err = {0};
     mt_field *f = glue_field(L, 1);
-    glue_grid *g = glue_grid_at(L, 2);
+    mt_sweeper *sweeper = sweeper_at(L, 2);
     mt_structure s;
-    if (!g->sweeper) glue_check(L, mt_sweeper_new(&g->sweeper, g->grid, glue_of(L)->pool, &err), &err);
-    glue_check(L, mt_structure_of(g->sweeper, f->values, &s, &err), &err);
+    glue_check(L, mt_structure_of(sweeper, f->values, &s, &err), &err);
     lua_newtable(L);
     set(L, "wavelength", s.wavelength);
     set(L, "peak", s.peak);
+    set(L, "peak_k", s.peak_k);
+    set(L, "half_width", s.half_width);
     set(L, "first", s.first);
+    set(L, "second", s.second);
+    set(L, "deviation", s.deviation);
     set(L, "variance", s.variance);
     set_list(L, "k", (size_t)s.shells, s.k);
     set_list(L, "s", (size_t)s.shells, s.s);
     set_list(L, "modes", (size_t)s.shells, s.modes);
     mt_structure_free(&s);
+    return 1;
+}
+
+/* sectors(field, grid, count): lists by sector; k, s, modes sector by sector */
+static int sectors(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_sweeper *sweeper = sweeper_at(L, 2);
+    mt_sectors s;
+    glue_check(L, mt_sectors_of(sweeper, f->values, (int)luaL_checkinteger(L, 3), &s, &err), &err);
+    size_t all = (size_t)s.sectors * (size_t)s.shells, each = (size_t)s.sectors;
+    lua_newtable(L);
+    set(L, "shells", s.shells);
+    set(L, "anisotropy", s.anisotropy);
+    set_list(L, "angle", each, s.angle);
+    set_list(L, "wavelength", each, s.wavelength);
+    set_list(L, "share", each, s.share);
+    set_list(L, "k", all, s.k);
+    set_list(L, "s", all, s.s);
+    set_list(L, "modes", all, s.modes);
+    mt_sectors_free(&s);
+    return 1;
+}
+
+/* correlation(field, grid) -> { r, c, zero, spacing } */
+static int correlation(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_sweeper *sweeper = sweeper_at(L, 2);
+    mt_correlation c;
+    glue_check(L, mt_correlation_of(sweeper, f->values, &c, &err), &err);
+    lua_newtable(L);
+    set(L, "zero", c.zero);
+    set(L, "spacing", c.spacing);
+    set_list(L, "r", (size_t)c.count, c.r);
+    set_list(L, "c", (size_t)c.count, c.c);
+    mt_correlation_free(&c);
     return 1;
 }
 
@@ -213,6 +261,8 @@ void glue_open_measure(lua_State *L) {
         {"topology", topology},
         {"interface", interface},
         {"structure", structure},
+        {"sectors", sectors},
+        {"correlation", correlation},
         {"fit_power", fit_power},
         {"fit_cubic", fit_cubic},
         {NULL, NULL},

@@ -158,7 +158,7 @@ local function known(v)
 end
 
 ---A measurement with parts. t: name; all: function() -> table in SI with an entry per part; parts: list of { name, power of length };
----main: the part it is in a ledger; columns: of its table, list of { name, power of length, is text }; rows: function(all) -> rows.
+---main: the part it is in a ledger; columns: of its table, list of { name, power of length or unit, is text }; rows: function(all) -> rows.
 function M.make_whole(t)
   local m = setmetatable({ name = t.name, unit = "", parts = {}, columns = t.columns, rows = t.rows }, Measurement)
   for _, p in ipairs(t.parts) do m.parts[p[1]] = p[2] or 0 end
@@ -189,8 +189,8 @@ end
 function M.table_head(m)
   local head = {}
   for i, c in ipairs(m.columns) do
-    local _, u = length_unit(c[2] or 0)
-    head[i] = { c[1], u, c[3] or false }
+    local _, u = length_unit(tonumber(c[2]) or 0)
+    head[i] = { c[1], type(c[2]) == "string" and c[2] or u, c[3] or false }
   end
   return head
 end
@@ -201,7 +201,7 @@ function M.table_rows(m)
   for _, row in ipairs(list) do
     for i, c in ipairs(m.columns) do
       local v = row[i]
-      if type(v) == "number" then row[i] = v == v and v / length_unit(c[2] or 0) end
+      if type(v) == "number" then row[i] = v == v and v / length_unit(tonumber(c[2]) or 0) end
     end
   end
   return list
@@ -228,7 +228,7 @@ function M.interface(e, t)
 end
 
 -- In white noise the highest shell of the structure factor stands little above the others; a wave worth a wavelength stands out.
-local function stands_out(s)
+function M.stands_out(s)
   local sum, top = 0, 0
   for _, v in ipairs(s.s) do
     sum, top = sum + v, math.max(top, v)
@@ -242,7 +242,7 @@ function M.wavelength(e)
   return lengths("wavelength(" .. label(e) .. ")", e, 1, function()
     local f, g = M.values(e, "wavelength")
     local s = core.structure(f, g.core)
-    return stands_out(s) and s.wavelength or nil
+    return M.stands_out(s) and s.wavelength or nil
   end)
 end
 

@@ -1,6 +1,7 @@
 -- Measurements with parts: domains, the structure factor. `now` gives all of it as a table, a ledger takes parts
 -- (domains(c).mean_diameter), m:tabulate writes the distribution.
 local core = require "core"
+local options = require "options"
 local measure = require "measure"
 
 local M = {}
@@ -143,9 +144,102 @@ function M.structure_factor(e)
       local f, grid = measure.values(e, "structure_factor")
       return core.structure(f, grid.core)
     end,
-    parts = { { "peak", 1 }, { "wavelength", 1 }, { "first", -1 }, { "variance" } },
+    parts = { { "peak", 1 }, { "wavelength", 1 }, { "peak_k", -1 }, { "half_width", -1 }, { "first", -1 }, { "second", -2 }, { "deviation", -1 },
+      { "variance" } },
     columns = { { "k", -1 }, { "S", g.dim }, { "modes" } },
     rows = structure_rows }
+end
+
+local function sector_rows(g)
+  return function(s)
+    local rows = {}
+    for i = 1, #s.share do
+      local name = g.dim == 2 and math.deg(s.angle[i]) or axis_names[i]
+      for j = (i - 1) * s.shells + 1, i * s.shells do
+        if s.modes[j] > 0 then rows[#rows + 1] = { name, s.k[j], s.s[j], s.modes[j] } end
+      end
+    end
+    return rows
+  end
+end
+
+---Structure factor by directions: sectors of angle in 2-D (an even number, so that x and y have one), nearest to an axis in 3-D.
+function M.structure_sectors(e, t)
+  local o = options.read(t or {}, "structure_sectors", { { "sectors", "count", default = 12 } })
+  local _, g = measure.values(e, "structure_sectors")
+  if g.dim == 1 then core.fail("structure_sectors: a grid of one axis has one direction only; use structure_factor") end
+  if g.dim == 3 and t and t.sectors then core.fail("structure_sectors: in 3-D there are three sectors, nearest to x, y and z; leave 'sectors' out") end
+  if g.dim == 2 and (o.sectors % 2 == 1 or o.sectors > 360) then
+    core.fail("structure_sectors: option 'sectors' has to be an even number up to 360, found " .. o.sectors)
+  end
+  return measure.make_whole { name = "structure_sectors(" .. measure.label(e) .. ")", main = "anisotropy",
+    all = function()
+      local f, grid = measure.values(e, "structure_sectors")
+      local s = core.sectors(f, grid.core, o.sectors // 1 | 0)
+      for a = 1, g.dim do
+        local at = g.dim == 3 and a or (a - 1) * (o.sectors // 2) + 1
+        s["wavelength_" .. axis_names[a]], s["share_" .. axis_names[a]] = s.wavelength[at], s.share[at]
+      end
+      return s
+    end,
+    parts = join({ { "anisotropy" } }, per_axis(g.dim, "wavelength_", 1), per_axis(g.dim, "share_")),
+    columns = { g.dim == 2 and { "angle", "degree" } or { "axis", 0, true }, { "k", -1 }, { "S", g.dim }, { "modes" } },
+    rows = sector_rows(g) }
+end
+
+-- --- correlation --------------------------------------------------------------------------------------------------------------
+
+---Two-point correlation, averaged over directions; in a ledger its first zero.
+function M.correlation(e)
+  measure.values(e, "correlation")
+  return measure.make_whole { name = "correlation(" .. measure.label(e) .. ")", main = "zero",
+    all = function()
+      local f, grid = measure.values(e, "correlation")
+      return core.correlation(f, grid.core)
+    end,
+    parts = { { "zero", 1 }, { "spacing", 1 } },
+    columns = { { "r", 1 }, { "C" } },
+    rows = function(c)
+      local rows = {}
+      for i = 1, #c.r do rows[i] = { c.r[i], c.c[i] } end
+      return rows
+    end }
+end
+
+-- --- characteristic lengths -----------------------------------------------------------------------------------------------------
+
+local length_names = { "wavelength", "peak", "zero", "spacing", "interface", "chord_above", "chord_below", "diameter_above", "diameter_below" }
+
+---The lengths by which a structure is known, side by side.
+function M.lengths(e, t)
+  local o = measure.phase_options(t, "lengths", nil, true)
+  local _, g = measure.values(e, "lengths")
+  local volume = 1
+  for a = 1, g.dim do volume = volume * g.cells[a] * g.spacing[a] end
+  local parts = {}
+  for i, name in ipairs(length_names) do parts[i] = { name, 1 } end
+  return measure.make_whole { name = "lengths(" .. measure.label(e) .. ")", main = "wavelength",
+    all = function()
+      local f, grid = measure.values(e, "lengths")
+      local level = measure.level_of(f, o)
+      local s, c, area = core.structure(f, grid.core), core.correlation(f, grid.core), core.interface(f, level)
+      local waves = measure.stands_out(s)
+      local l = { wavelength = waves and s.wavelength or nil, peak = waves and s.peak or nil, zero = c.zero, spacing = c.spacing,
+        interface = area > 0 and volume / area or nil }
+      for _, side in ipairs { "above", "below" } do
+        local d = core.domains(f, level, side == "above", false)
+        l["chord_" .. side] = core.chords(f, level, side == "above").mean
+        l["diameter_" .. side] = d.count > 0 and d.mean_diameter or nil
+      end
+      for _, name in ipairs(length_names) do if l[name] ~= l[name] then l[name] = nil end end
+      return l
+    end,
+    parts = parts, columns = { { "name", 0, true }, { "length", 1 } },
+    rows = function(l)
+      local rows = {}
+      for i, name in ipairs(length_names) do rows[i] = { name, l[name] or 0 / 0 } end
+      return rows
+    end }
 end
 
 return M

@@ -29,10 +29,36 @@ typedef struct mt_structure {
     double
         first; /* k1 = sum k S / sum S over shells, both shell-averaged: first moment; NaN without variance */
     double wavelength; /* 2 pi / k1, a characteristic length; NaN for a field without variance */
+    double second;     /* mean of k^2 over shells, weighted alike: second moment, rad^2/m^2; NaN likewise */
+    double deviation;  /* sqrt(second - first^2): how far S spreads in k, rad/m; NaN likewise */
+    double peak_k;     /* wavenumber of the peak: see peak */
+    double half_width; /* full width of the peak at half the height of the highest shell, by straight lines
+                          between shells, rad/m; NaN where S does not fall to the half on both sides */
     double peak; /* wavelength of the peak: parabola in log S through the highest shell and its neighbours;
                     NaN likewise */
     double variance; /* (1/V) times the sum over all modes, also those beyond the last shell */
 } mt_structure;
+
+/* S by directions. In an area: `count` sectors, sector i around the angle i pi / count from the x axis, to
+ * half of pi / count either way; k and -k are one direction. In a volume: 3 sectors, the directions nearest
+ * to x, y and z. A mode on the bound of sectors is shared between them, and a cosine along a mirror axis
+ * between the directions of both signs. Shells as above. */
+typedef struct mt_sectors {
+    int sectors, shells;
+    double *k, *s, *modes; /* [sectors * shells] as in mt_structure, sector by sector; S 0 where no mode is */
+    double *angle;         /* [sectors] in an area, rad; 0 in a volume */
+    double *wavelength;    /* [sectors] 2 pi over the first moment of S over its shells that hold modes; NaN
+                              without */
+    double *share;     /* [sectors] share of the variance, over all modes; NaN for a field without variance */
+    double anisotropy; /* (largest share - smallest) / (largest + smallest): 0 none, 1 one direction only */
+    double width;
+    double *block;
+} mt_sectors;
+
+/* count: of sectors in an area, from 2 to 1000; ignored in a volume. EINPUT in 1-D. ENOMEM as below. */
+MT_API mt_status mt_sectors_of(mt_sweeper *sweeper, const double *a, int count, mt_sectors *out,
+                               mt_error *err) MT_MUST_USE;
+MT_API void mt_sectors_free(mt_sectors *s);
 
 /* a: the field on the sweeper's grid. ENOMEM (one spectral and one work array, about 16 bytes per cell, while
  * it works; 24 bytes per shell stay until freed). */

@@ -51,6 +51,24 @@ local ball = topology(b, { level = 0 })
 near(now(ball.volume), 4/3*math.pi*512, 40, "volume"); near(now(ball.surface), 4*math.pi*64, 10, "surface"); near(now(ball.mean_breadth), 16, 0.3, "breadth")
 same(now(ball.euler), 1.0, "a ball")
 
+-- spectra and lengths: a wave of 6 along x, half as strong one of 10 along y
+local w = g:field("w", 0.5 + 0.2*cos(2*math.pi*g.x/6) + 0.1*cos(2*math.pi*g.y/5))
+local s = structure_factor(w)
+near(now(s.variance), 0.02 + 0.005, 1e-12, "variance"); near(now(s).first, 2*math.pi/now(s.wavelength), 1e-12, "first moment")
+near(now(s.deviation), math.sqrt(now(s.second) - now(s.first)^2), 1e-9, "deviation"); near(now(s.peak_k), 2*math.pi/now(s.peak), 1e-12, "peak")
+local way = structure_sectors(w)
+near(now(way.share_x), 0.8, 1e-12, "along x"); near(now(way.share_y), 0.2, 1e-12, "along y"); near(now(way.wavelength_x), 6, 0.5, "wavelength along x")
+near(now(way.anisotropy), 1, 1e-12, "nothing across"); same(#now(way).share, 12, "sectors")
+near(now(correlation(g:field("x wave", 0.1*cos(2*math.pi*g.x/6))).zero), 2.404825557695773*6/(2*math.pi), 1e-6, "first zero of J0")
+same(now(correlation(g:field("flat too", 0.5)).zero), nil, "no zero")
+local l = now(lengths(c))
+near(l.chord_above, 3, 1e-12, "chord"); near(l.chord_below, 5, 1e-12, "chord"); near(l.interface, 240/60, 1e-9, "interface"); near(l.peak, 8, 0.7, "peak")
+near(l.diameter_above, now(d.mean_diameter), 1e-12, "diameter"); near(now(lengths(c).wavelength), now(wavelength(c)), 1e-12, "wavelength")
+same(now(lengths(g:field("noise", noise.normal{ seed = 4 })).wavelength), nil, "no wavelength in noise")
+refused("an even number up to 360, found 5", structure_sectors, c, { sectors = 5 })
+refused("leave 'sectors' out", structure_sectors, b, { sectors = 4 })
+near(now(structure_sectors(b).share_z), 1/3, 0.01, "a ball has no direction")
+
 -- tables and parts in a run
 local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) }
 m:conserve(c, { mobility = 1 })
@@ -59,6 +77,6 @@ refused("has no table; its numbers go into m:record", function() m:tabulate{ top
 refused("expected measurements, found field", function() m:tabulate{ c } end)
 refused("expected measurements with a table first", function() m:tabulate{ every = 1 } end)
 m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak, top, top.perimeter, ch.mean_x }
-m:tabulate{ d, ch, domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
+m:tabulate{ d, ch, way, correlation(c), lengths(c), structure_sectors(c), domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
 m:run{ duration = 3 }
 refused("before the first m:run", function() m:tabulate{ d } end)

@@ -9,6 +9,8 @@ import tempfile
 import numpy as np
 import scipy.fft
 import scipy.ndimage
+import scipy.optimize
+import scipy.special
 import skimage.filters
 import skimage.measure
 
@@ -20,7 +22,7 @@ def run(a, walls, level):
         a.astype("<f8").tofile(f.name)
         shape = list(a.shape[::-1]) + [1] * (3 - a.ndim)
         out = subprocess.run([probe, f.name, *map(str, shape), walls, repr(level)], check=True, capture_output=True, text=True).stdout
-    values, shells, lists = {}, [], {"shape": [], "chord": []}
+    values, shells, lists = {}, [], {"shape": [], "chord": [], "correlation": [], "sector": []}
     for line in out.splitlines():
         words = line.split()
         if words[0] == "shell":
@@ -110,6 +112,21 @@ for i, (mean_k, mean_s, modes) in enumerate(shells, start=1):
     close("shell S", mean_s, s[m].mean(), 1e-11)
     close("shell k", mean_k, k[m].mean(), 1e-12)
 close("wavelength", v["wavelength"], 2 * np.pi * shells[:, 1].sum() / (shells[:, 0] * shells[:, 1]).sum(), 1e-12)
+
+close("second moment", v["second"], (shells[:, 1] * shells[:, 0] ** 2).sum() / shells[:, 1].sum(), 1e-12)
+
+# Correlation averaged over directions, mode by mode; shares of the directions.
+r = v["correlation"][:, 0]
+wanted = np.array([(s * scipy.special.j0(k * x))[kept].sum() for x in r]) / s[kept].sum()
+close("correlation", np.abs(v["correlation"][:, 1] - wanted).max(), 0, 0, 1e-3)
+zero = scipy.optimize.brentq(lambda x: (s * scipy.special.j0(k * x))[kept].sum(), 1e-3, r[np.flatnonzero(wanted < 0)[0]])
+close("first zero", v["zero"], zero, 1e-5)
+place = (np.arctan2(*np.meshgrid(np.fft.fftfreq(36), np.fft.fftfreq(48), indexing="ij")) / np.pi * 6)[kept]
+share = np.zeros(6)
+for way in (-1e-9, 1e-9):  # modes on a bound are shared
+    np.add.at(share, np.round(place + way).astype(int) % 6, 0.5 * s[kept] / s[kept].sum())
+for got, wanted in zip(v["sector"][:, 0], share):
+    close("sector", got, wanted, 1e-12)
 
 # Mirror walls: the same sum rule through the cosine transform.
 v, _ = run(a, "mmm", 0.0)

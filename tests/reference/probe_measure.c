@@ -6,6 +6,7 @@
 
 #include "core/base/memory.h"
 #include "core/measure/chords.h"
+#include "core/measure/correlation.h"
 #include "core/measure/domains.h"
 #include "core/measure/interface.h"
 #include "core/measure/statistics.h"
@@ -52,6 +53,21 @@ static void topology(const mt_grid *g, const double *a, double level, bool full)
            t.boundary);
 }
 
+static void correlation(mt_sweeper *w, const double *a) {
+    mt_correlation c;
+    must(mt_correlation_of(w, a, &c, &err));
+    printf("zero %.17g\n", c.zero);
+    for (int i = 0; i < c.count; i++) printf("correlation %.17g %.17g\n", c.r[i], c.c[i]);
+    mt_correlation_free(&c);
+}
+
+static void sectors(mt_sweeper *w, const double *a) {
+    mt_sectors s;
+    must(mt_sectors_of(w, a, 6, &s, &err));
+    for (int i = 0; i < s.sectors; i++) printf("sector %.17g %.17g\n", s.share[i], s.wavelength[i]);
+    mt_sectors_free(&s);
+}
+
 static void structure(mt_grid *g, const double *a) {
     mt_sweeper *w;
     mt_structure s;
@@ -59,7 +75,10 @@ static void structure(mt_grid *g, const double *a) {
     must(mt_structure_of(w, a, &s, &err));
     printf("wavelength %.17g\nsum_rule %.17g\n", s.wavelength, s.variance);
     for (int i = 0; i < s.shells; i++) printf("shell %.17g %.17g %.17g\n", s.k[i], s.s[i], s.modes[i]);
+    printf("second %.17g\n", s.second);
     mt_structure_free(&s);
+    correlation(w, a);
+    if (g->dim > 1) sectors(w, a);
     mt_sweeper_free(&w);
 }
 
