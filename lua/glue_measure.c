@@ -4,9 +4,11 @@
 #include "core/base/memory.h"
 #include "core/measure/chords.h"
 #include "core/measure/correlation.h"
+#include "core/measure/curvature.h"
 #include "core/measure/domains.h"
 #include "core/measure/growth.h"
 #include "core/measure/interface.h"
+#include "core/measure/profile.h"
 #include "core/measure/statistics.h"
 #include "core/measure/structure.h"
 #include "core/measure/topology.h"
@@ -150,6 +152,91 @@ static int interface(lua_State *L) {
     return 1;
 }
 
+static void push_bend(lua_State *L, const char *name, const mt_bend *b, int classes) {
+    lua_newtable(L);
+    set(L, "mean", b->mean);
+    set(L, "deviation", b->deviation);
+    set(L, "integral", b->integral);
+    set(L, "low", b->low);
+    set(L, "width", b->width);
+    set_list(L, "share", (size_t)classes, b->share);
+    lua_setfield(L, -2, name);
+}
+
+/* curvature(field, level, above, classes) -> { mean = {...}, gauss = {...}, size, lost, tensor, preferred,
+ * anisotropy, polar, azimuth, facing } */
+static int curvature(lua_State *L) {
+    mt_error err = {0};
+    mt_field *f = glue_field(L, 1);
+    mt_curvature c;
+    mt_status st = mt_curvature_of(f->grid, f->values, luaL_checknumber(L, 2), lua_toboolean(L, 3),
+                                   (int)luaL_checkinteger(L, 4), &c, &err);
+    glue_check(L, st, &err);
+    lua_newtable(L);
+    push_bend(L, "mean", &c.mean, c.classes);
+    push_bend(L, "gauss", &c.gauss, c.classes);
+    set(L, "size", c.size);
+    set(L, "lost", c.lost);
+    set(L, "anisotropy", c.anisotropy);
+    set(L, "polar", c.polar);
+    set(L, "azimuth", c.azimuth);
+    set_list(L, "tensor", 6, c.tensor);
+    set_list(L, "preferred", 3, c.preferred);
+    set_list(L, "facing", (size_t)(c.polar * c.azimuth), c.facing);
+    mt_curvature_free(&c);
+    return 1;
+}
+
+/* Room for n numbers that the collector owns, on the stack. */
+static double *numbers(lua_State *L, size_t n) {
+    return lua_newuserdatauv(L, (n ? n : 1) * sizeof(double), 0);
+}
+
+/* profile_along(field, axis) -> means, deviations */
+static int profile_along(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    int axis = (int)luaL_checkinteger(L, 2);
+    if (axis < 0 || axis >= f->grid->dim) return glue_fail(L, MT_ESCRIPT, "the grid has no such axis");
+    size_t n = (size_t)f->grid->n[axis];
+    double *mean = numbers(L, n), *deviation = numbers(L, n);
+    mt_profile_along(f->grid, f->values, axis, mean, deviation);
+    lua_newtable(L);
+    set_list(L, "mean", n, mean);
+    set_list(L, "deviation", n, deviation);
+    return 1;
+}
+
+/* profile_between(field, from, to, count) -> values */
+static int profile_between(lua_State *L) {
+    mt_field *f = glue_field(L, 1);
+    size_t n = (size_t)luaL_checkinteger(L, 4), from_size, to_size, dim = (size_t)f->grid->dim;
+    double *from = glue_numbers(L, 2, &from_size), *to = glue_numbers(L, 3, &to_size);
+    if (from_size != dim || to_size != dim)
+        return glue_fail(L, MT_ESCRIPT, "a place on this grid has %d coordinates", (int)dim);
+    double *v = numbers(L, n);
+    mt_profile_between(f->grid, f->values, from, to, (int)n, v);
+    lua_newtable(L);
+    set_list(L, "values", n, v);
+    return 1;
+}
+
+/* interface_width(values, spacing, mirror, low, high) -> width, or nil where there is no interface */
+static int interface_width(lua_State *L) {
+    mt_error err = {0};
+    size_t n;
+    double *v = glue_numbers(L, 1, &n), width;
+    mt_status st =
+        mt_interface_width((int)n, luaL_checknumber(L, 2), lua_toboolean(L, 3) ? MT_MIRROR : MT_PERIODIC, v,
+                           luaL_checknumber(L, 4), luaL_checknumber(L, 5), &width, &err);
+    if (st == MT_EINPUT) {
+        lua_pushnil(L);
+        return 1;
+    }
+    glue_check(L, st, &err);
+    lua_pushnumber(L, width);
+    return 1;
+}
+
 static mt_sweeper *sweeper_at(lua_State *L, int index) {
     mt_error err = {0};
     glue_grid *g = glue_grid_at(L, index);
@@ -262,6 +349,10 @@ void glue_open_measure(lua_State *L) {
         {"interface", interface},
         {"structure", structure},
         {"sectors", sectors},
+        {"curvature", curvature},
+        {"profile_along", profile_along},
+        {"profile_between", profile_between},
+        {"interface_width", interface_width},
         {"correlation", correlation},
         {"fit_power", fit_power},
         {"fit_cubic", fit_cubic},

@@ -76,13 +76,16 @@ local function scaled(power, f)
   end
 end
 
-local function lengths(name, e, power, f)
+---A measurement with the dimension of a power of length: f gives it in SI.
+function M.lengths(name, e, power, f)
   local m = make(name, nil, nil)
   m.raw = f                    -- SI, for now()
   m.value = scaled(power, f)   -- in the ledger's unit
   m.power = power
   return m
 end
+
+local lengths = M.lengths
 
 for _, name in ipairs { "mean", "minimum", "maximum", "variance" } do
   ---Statistic of a field or formula.

@@ -128,6 +128,147 @@ function M.topology(e, t)
       g.dim == 3 and { { "mean_breadth", 1 } } or {}) }
 end
 
+-- --- curvature and orientation of the interface ---------------------------------------------------------------------------------
+
+local function curved(e, t, what, more)
+  local o = measure.phase_options(t, what, more)
+  local _, g = measure.values(e, what)
+  if g.dim == 1 then core.fail(what .. ": on a grid of one axis interfaces are points; use interface(c), their number") end
+  return g, function()
+    local f = measure.values(e, what)
+    return core.curvature(f, measure.level_of(f, o), o.above, (o.classes or 1) // 1 | 0)
+  end
+end
+
+local function curvature_rows(dim)
+  return function(c)
+    local rows, b, k = {}, c.bend.mean, c.bend.gauss
+    for i = 1, c.size > 0 and #b.share or 0 do
+      rows[i] = { b.low + (i - 0.5) * b.width, b.share[i] }
+      if dim == 3 then rows[i][3], rows[i][4] = k.low + (i - 0.5) * k.width, k.share[i] end
+    end
+    return rows
+  end
+end
+
+---Curvature of the interface, positive where the phase is convex: of the line in 2-D, mean and Gaussian curvature in 3-D.
+function M.curvature(e, t)
+  local g, get = curved(e, t, "curvature", { { "classes", "count", default = 64 } })
+  local gauss = g.dim == 3
+  return measure.make_whole { name = "curvature(" .. measure.label(e) .. ")", main = "mean",
+    all = function()
+      local c = get()
+      local k = { mean = c.mean.mean, deviation = c.mean.deviation, integral = c.mean.integral, lost = c.lost, size = c.size, bend = c }
+      if gauss then k.gauss, k.gauss_deviation, k.gauss_integral = c.gauss.mean, c.gauss.deviation, c.gauss.integral end
+      return k
+    end,
+    parts = join({ { "mean", -1 }, { "deviation", -1 }, { "integral", g.dim - 2 }, { "lost" } },
+      gauss and { { "gauss", -2 }, { "gauss_deviation", -2 }, { "gauss_integral" } } or {}),
+    columns = join({ { gauss and "mean_curvature" or "curvature", -1 }, { "share" } }, gauss and { { "gaussian_curvature", -2 }, { "gaussian_share" } } or {}),
+    rows = curvature_rows(g.dim) }
+end
+
+local function facing_rows(dim)
+  return function(c)
+    local rows, n = {}, #c.facing
+    for i = 1, c.size > 0 and n or 0 do
+      local around, down = (i - 1) % c.azimuth * 360 / c.azimuth, (i - 1) // c.azimuth
+      local polar = math.deg(math.acos(1 - (2 * down + 1) / c.polar))
+      rows[i] = dim == 3 and { polar, around, c.facing[i], c.facing[i] * n } or { around, c.facing[i], c.facing[i] * n }
+    end
+    return rows
+  end
+end
+
+---Directions of the normal of the interface, out of the phase.
+function M.orientation(e, t)
+  local g, get = curved(e, t, "orientation")
+  return measure.make_whole { name = "orientation(" .. measure.label(e) .. ")", main = "anisotropy",
+    all = function()
+      local c = get()
+      for a = 1, g.dim do c["preferred_" .. axis_names[a]], c["facing_" .. axis_names[a]] = c.preferred[a], c.tensor[a] end
+      return c
+    end,
+    parts = join({ { "anisotropy" } }, per_axis(g.dim, "preferred_"), per_axis(g.dim, "facing_")),
+    columns = join(g.dim == 3 and { { "polar_angle", "degree" } } or {}, { { "angle", "degree" }, { "share" }, { "times_random" } }),
+    rows = facing_rows(g.dim) }
+end
+
+-- --- profiles -----------------------------------------------------------------------------------------------------------------
+
+local line_options = { { "axis", "string" }, { "from", "table" }, { "to", "table" }, { "points", "count" } }
+
+local function check_place(what, name, p, dim)
+  for a = 1, dim do
+    if type(p[a]) ~= "number" or p[a] ~= p[a] or math.abs(p[a]) == math.huge or #p ~= dim then
+      core.fail(string.format("%s: '%s' has to be a list of %d coordinates", what, name, dim))
+    end
+  end
+end
+
+local function axis_number(what, name, dim)
+  for a = 1, dim do if axis_names[a] == name then return a end end
+  core.fail(string.format("%s: option 'axis' has to be %s, found \"%s\"", what, table.concat(axis_names, ", ", 1, dim), name))
+end
+
+-- How a line is read: a function to values, spacing of the points and place of the first, whether they are means along an axis.
+local function line_of(e, t, what, more)
+  local o = options.read(t or {}, what, join(line_options, more or {}))
+  local _, g = measure.values(e, what)
+  if o.axis and not (o.from or o.to or o.points) or not (o.axis or o.from or o.to or o.points) then
+    local a = axis_number(what, o.axis or "x", g.dim)
+    return { grid = g, step = g.spacing[a], first = g.spacing[a] / 2, along = true, mirror = g.mirror[a],
+      get = function() return core.profile_along((measure.values(e, what)), a - 1) end }, o
+  end
+  if o.axis or not (o.from and o.to) then
+    core.fail(what .. ": say either axis = \"x\" (the mean across it) or from = {...} and to = {...}")
+  end
+  check_place(what, "from", o.from, g.dim)
+  check_place(what, "to", o.to, g.dim)
+  local square, least = 0, math.huge
+  for a = 1, g.dim do square, least = square + (o.to[a] - o.from[a]) ^ 2, math.min(least, g.spacing[a]) end
+  local points = o.points or math.ceil(math.sqrt(square) / least) + 1
+  if square == 0 or points < 2 or points > 1e6 then core.fail(what .. ": from and to have to be apart, with 2 to 1e6 points from one to the other") end
+  return { grid = g, step = math.sqrt(square) / (points - 1), first = 0, along = false, mirror = true,
+    get = function() return { mean = core.profile_between((measure.values(e, what)), o.from, o.to, points // 1 | 0).values } end }, o
+end
+
+---A field along a line: the mean across an axis (with its deviation), or between two points. In a ledger its largest value less its smallest.
+function M.profile(e, t)
+  local line = line_of(e, t, "profile")
+  return measure.make_whole { name = "profile(" .. measure.label(e) .. ")", main = "range",
+    all = function()
+      local p = line.get()
+      p.minimum, p.maximum, p.places = math.huge, -math.huge, {}
+      for i, v in ipairs(p.mean) do
+        p.minimum, p.maximum, p.places[i] = math.min(p.minimum, v), math.max(p.maximum, v), line.first + (i - 1) * line.step
+      end
+      p.range = p.maximum - p.minimum
+      return p
+    end,
+    parts = { { "range" }, { "minimum" }, { "maximum" } },
+    columns = join({ { line.along and "position" or "distance", 1 }, { line.along and "mean" or "value" } }, line.along and { { "deviation" } } or {}),
+    rows = function(p)
+      local rows = {}
+      for i = 1, #p.mean do rows[i] = { p.places[i], p.mean[i], p.deviation and p.deviation[i] } end
+      return rows
+    end }
+end
+
+---10-90 width of the first interface along such a line, between low and high: the composition peaks of the whole field unless given
+---(which lie inside the plateaus by a little, so a tanh reads 1 % short).
+function M.interface_width(e, t)
+  local line, o = line_of(e, t, "interface_width", { { "low", "number" }, { "high", "number" } })
+  if (o.low == nil) ~= (o.high == nil) or (o.low and not (o.low < o.high)) then
+    core.fail("interface_width: say both low and high, low below high, or neither")
+  end
+  return measure.lengths("interface_width(" .. measure.label(e) .. ")", e, 1, function()
+    local p = o.low and o or core.peaks((measure.values(e, "interface_width")))
+    if not (p.high > p.low) then return nil end
+    return core.interface_width(line.get().mean, line.step, line.mirror, p.low, p.high)
+  end)
+end
+
 -- --- structure factor ---------------------------------------------------------------------------------------------------------
 
 local function structure_rows(s)

@@ -112,7 +112,7 @@ function M.make(folder, model)
   for _, name in ipairs { "mean", "integral", "minimum", "maximum", "variance", "amplitude", "phase_fraction", "interface",
     "wavelength", "now" } do env[name] = measure[name] end
   for _, name in ipairs { "domains", "domain_count", "chords", "topology", "structure_factor", "structure_sectors",
-    "correlation", "lengths" } do env[name] = microstructure[name] end
+    "correlation", "lengths", "curvature", "orientation", "profile", "interface_width" } do env[name] = microstructure[name] end
   for _, name in ipairs { "schedule", "quench", "ramp", "hold" } do env[name] = schedule[name] end
   env.clock = core.clock -- wall time in seconds, for timing; not for decisions that a run should repeat
   env.unit, env.degC, env.input, env.model = units.unit, units.degC, inputs.input, model

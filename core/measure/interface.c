@@ -3,6 +3,7 @@
 #include <math.h>
 
 #include "core/base/memory.h"
+#include "core/measure/interface_inside.h"
 
 /* --- the net of cell centres ------------------------------------------------------------------------------
  */
@@ -60,50 +61,53 @@ static int side_points(const double v[4], double level, point2 p[4], int side[4]
     return n;
 }
 
-static double piece(const mt_grid *g, point2 a, point2 b) {
-    return hypot((a.x - b.x) * g->h[0], (a.y - b.y) * g->h[1]);
+static void add_piece(const mt_grid *g, point2 a, point2 b, mt_facets *f) {
+    double size = hypot((a.x - b.x) * g->h[0], (a.y - b.y) * g->h[1]);
+    f->facet[f->n++] = (mt_facet){{0.5 * (a.x + b.x), 0.5 * (a.y + b.y), 0}, size};
 }
 
-static double square_length(const mt_grid *g, const double v[4], double level) {
+static void cut_square(const mt_grid *g, const double v[4], double level, mt_facets *f) {
     point2 p[4];
     int side[4], n = side_points(v, level, p, side);
-    if (n == 2) return piece(g, p[0], p[1]);
-    if (n < 4) return 0;
+    if (n == 2) add_piece(g, p[0], p[1], f);
+    if (n < 4) return;
     /* a saddle: the corners that agree with the centre are connected through it, so the pieces cut off the
      * other two */
-    bool centre = (v[0] + v[1] + v[2] + v[3]) / 4 > level;
-    if (centre == (v[0] > level)) return piece(g, p[0], p[1]) + piece(g, p[2], p[3]);
-    return piece(g, p[3], p[0]) + piece(g, p[1], p[2]);
+    int first = ((v[0] + v[1] + v[2] + v[3]) / 4 > level) == (v[0] > level) ? 0 : 3;
+    add_piece(g, p[first], p[(first + 1) % 4], f);
+    add_piece(g, p[(first + 2) % 4], p[(first + 3) % 4], f);
 }
 
-static double length(const mt_grid *g, const double *a, double level) {
-    double total = 0;
+static void walk_squares(const mt_grid *g, const double *a, double level, mt_facet_visit visit, void *ctx) {
     for (int y = first_square(g, 1); y < g->n[1]; y++) {
-        double row = 0;
         int y0 = corner(g, 1, y), y1 = corner(g, 1, y + 1);
         for (int x = first_square(g, 0); x < g->n[0]; x++) {
             int x0 = corner(g, 0, x), x1 = corner(g, 0, x + 1);
             double v[4] = {value(g, a, x0, y0, 0), value(g, a, x1, y0, 0), value(g, a, x1, y1, 0),
                            value(g, a, x0, y1, 0)};
-            row += share(g, 0, x) * share(g, 1, y) * square_length(g, v, level);
+            mt_facets f = {.cube = {x, y, 0}, .share = share(g, 0, x) * share(g, 1, y)};
+            cut_square(g, v, level, &f);
+            if (f.n) visit(ctx, &f);
         }
-        total += row;
     }
-    return total;
 }
 
 /* --- 3-D --------------------------------------------------------------------------------------------------
  */
 
 typedef struct point3 {
-    double r[3];
+    double r[3]; /* cells */
 } point3;
 
-static double triangle(point3 a, point3 b, point3 c) {
+static void add_triangle(const double h[3], point3 a, point3 b, point3 c, mt_facets *f) {
     double u[3], v[3];
-    for (int i = 0; i < 3; i++) u[i] = b.r[i] - a.r[i], v[i] = c.r[i] - a.r[i];
+    mt_facet *t = &f->facet[f->n++];
+    for (int i = 0; i < 3; i++) {
+        u[i] = (b.r[i] - a.r[i]) * h[i], v[i] = (c.r[i] - a.r[i]) * h[i];
+        t->at[i] = (a.r[i] + b.r[i] + c.r[i]) / 3;
+    }
     double n[3] = {u[1] * v[2] - u[2] * v[1], u[2] * v[0] - u[0] * v[2], u[0] * v[1] - u[1] * v[0]};
-    return 0.5 * sqrt(n[0] * n[0] + n[1] * n[1] + n[2] * n[2]);
+    t->size = 0.5 * sqrt(n[0] * n[0] + n[1] * n[1] + n[2] * n[2]);
 }
 
 static point3 between(const point3 *p, const double *v, int i, int j, double level) {
@@ -113,7 +117,8 @@ static point3 between(const point3 *p, const double *v, int i, int j, double lev
     return q;
 }
 
-static double tetrahedron_area(const point3 p[4], const double v[4], double level) {
+static void cut_tetrahedron(const double h[3], const point3 p[4], const double v[4], double level,
+                            mt_facets *f) {
     int in[4], out[4], n = 0, m = 0;
     for (int i = 0; i < 4; i++) {
         if (v[i] > level)
@@ -121,22 +126,23 @@ static double tetrahedron_area(const point3 p[4], const double v[4], double leve
         else
             out[m++] = i;
     }
-    if (n == 0 || m == 0) return 0;
+    if (n == 0 || m == 0) return;
     if (n == 2) {
         point3 a = between(p, v, in[0], out[0], level), b = between(p, v, in[0], out[1], level);
         point3 c = between(p, v, in[1], out[1], level), d = between(p, v, in[1], out[0], level);
-        return triangle(a, b, c) + triangle(a, c, d);
+        add_triangle(h, a, b, c, f);
+        add_triangle(h, a, c, d, f);
+        return;
     }
     const int *one = n == 1 ? in : out, *three = n == 1 ? out : in;
-    return triangle(between(p, v, one[0], three[0], level), between(p, v, one[0], three[1], level),
-                    between(p, v, one[0], three[2], level));
+    add_triangle(h, between(p, v, one[0], three[0], level), between(p, v, one[0], three[1], level),
+                 between(p, v, one[0], three[2], level), f);
 }
 
 /* Six tetrahedra around the diagonal from corner 0 to corner 7 (corner bits: x 1, y 2, z 4). */
-static double cube_area(const mt_grid *g, const double v[8], double level) {
+static void cut_cube(const mt_grid *g, const double v[8], double level, mt_facets *f) {
     static const int paths[6][4] = {{0, 1, 3, 7}, {0, 1, 5, 7}, {0, 2, 3, 7},
                                     {0, 2, 6, 7}, {0, 4, 5, 7}, {0, 4, 6, 7}};
-    double area = 0;
     int above = 0;
     for (int i = 0; i < 8; i++) above += v[i] > level;
     for (int t = 0; t < 6 && above > 0 && above < 8; t++) {
@@ -145,32 +151,56 @@ static double cube_area(const mt_grid *g, const double v[8], double level) {
         for (int i = 0; i < 4; i++) {
             int c = paths[t][i];
             w[i] = v[c];
-            for (int k = 0; k < 3; k++) p[i].r[k] = (c >> k & 1) * g->h[k];
+            for (int k = 0; k < 3; k++) p[i].r[k] = c >> k & 1;
         }
-        area += tetrahedron_area(p, w, level);
+        cut_tetrahedron(g->h, p, w, level, f);
     }
-    return area;
 }
 
-static double area(const mt_grid *g, const double *a, double level) {
-    double total = 0;
+static void walk_cubes(const mt_grid *g, const double *a, double level, mt_facet_visit visit, void *ctx) {
     for (int z = first_square(g, 2); z < g->n[2]; z++)
-        for (int y = first_square(g, 1); y < g->n[1]; y++) {
-            double row = 0;
+        for (int y = first_square(g, 1); y < g->n[1]; y++)
             for (int x = first_square(g, 0); x < g->n[0]; x++) {
                 double v[8];
                 for (int c = 0; c < 8; c++)
                     v[c] = value(g, a, corner(g, 0, x + (c & 1)), corner(g, 1, y + (c >> 1 & 1)),
                                  corner(g, 2, z + (c >> 2 & 1)));
-                row += share(g, 0, x) * cube_area(g, v, level);
+                mt_facets f;
+                f.n = 0;
+                cut_cube(g, v, level, &f);
+                if (!f.n) continue;
+                f.cube[0] = x, f.cube[1] = y, f.cube[2] = z;
+                f.share = share(g, 0, x) * share(g, 1, y) * share(g, 2, z);
+                visit(ctx, &f);
             }
-            total += share(g, 1, y) * share(g, 2, z) * row;
-        }
-    return total;
+}
+
+void mt_interface_walk(const mt_grid *g, const double *a, double level, mt_facet_visit visit, void *ctx) {
+    if (g->dim == 2) walk_squares(g, a, level, visit, ctx);
+    if (g->dim == 3) walk_cubes(g, a, level, visit, ctx);
+}
+
+/* Sums many small numbers with the rounding of one sum kept aside (Neumaier, ZAMM 54 (1974) 39; from memory).
+ */
+typedef struct total {
+    double sum, rest;
+} total;
+
+static void add_facets(void *ctx, const mt_facets *f) {
+    total *t = ctx;
+    double size = 0;
+    for (int i = 0; i < f->n; i++) size += f->facet[i].size;
+    size *= f->share;
+    double next = t->sum + size;
+    t->rest += t->sum >= size ? (t->sum - next) + size : (size - next) + t->sum;
+    t->sum = next;
 }
 
 double mt_interface_measure(const mt_grid *g, const double *a, double level) {
-    return g->dim == 1 ? crossings(g, a, level) : g->dim == 2 ? length(g, a, level) : area(g, a, level);
+    total t = {0, 0};
+    if (g->dim == 1) return crossings(g, a, level);
+    mt_interface_walk(g, a, level, add_facets, &t);
+    return t.sum + t.rest;
 }
 
 double mt_interface_spacing(const mt_grid *g, double measured) {

@@ -69,6 +69,33 @@ refused("an even number up to 360, found 5", structure_sectors, c, { sectors = 5
 refused("leave 'sectors' out", structure_sectors, b, { sectors = 4 })
 near(now(structure_sectors(b).share_z), 1/3, 0.01, "a ball has no direction")
 
+-- curvature and orientation, profiles
+local disc = grid{ cells = {64, 64}, spacing = 0.5 }
+local q = disc:field("q", 0.5 + 0.4*tanh((9 - ((disc.x - 16.2)^2 + (disc.y - 15.7)^2)^0.5)/1.8))
+local bent = curvature(q)
+near(now(bent.mean), 1/9, 0.001, "1/R"); near(now(bent.integral), 2*math.pi, 0.02, "once around"); near(now(bent.deviation), 0, 0.001, "round")
+near(now(curvature(q, { side = "below" }).mean), -1/9, 0.001, "from outside"); same(now(bent.lost), 0.0, "lost")
+near(now(orientation(q).anisotropy), 0, 0.01, "a disc faces all ways"); near(now(orientation(q).facing_x), 0.5, 0.01, "half of it")
+local facing = now(orientation(c)).facing
+near(facing[1], 0.5, 1e-9, "to the right"); near(facing[19], 0.5, 1e-9, "to the left"); same(#facing, 36, "classes")
+near(now(orientation(c).preferred_x), 1, 1e-9, "stripes face x"); near(now(orientation(c).anisotropy), 1, 1e-9, "stripes")
+local round = curvature(box:field("round", tanh(b/2)), { level = 0 })
+near(now(round.mean), 1/8, 0.002, "mean"); near(now(round.gauss), 1/64, 0.001, "Gauss"); near(now(round.gauss_integral), 4*math.pi, 0.3, "Gauss and Bonnet")
+refused("has no part 'gauss'", function() return bent.gauss end)
+local p = now(profile(w, { axis = "y" }))
+near(p.mean[3], 0.5 + 0.1*math.cos(2*math.pi*1.25/5), 1e-12, "mean across y"); near(p.deviation[3], 0.2/math.sqrt(2), 1e-12, "deviation")
+near(p.places[3], 1.25, 1e-12, "place"); near(now(profile(w).range), 0.4*math.cos(math.pi/12), 1e-12, "along x")
+local line = now(profile(g:field("slope", 1 + 2*g.x - g.y), { from = {1, 1}, to = {4, 5}, points = 11 }))
+near(line.mean[11], 1 + 8 - 5, 1e-12, "end"); near(line.mean[6], 1 + 5 - 3, 1e-12, "middle"); near(line.places[11], 5, 1e-12, "length")
+local step = disc:field("step", 0.5 + 0.4*(tanh((disc.x - 8)/1.5) - tanh((disc.x - 24)/1.5) - 1))
+near(now(interface_width(step, { low = 0.1, high = 0.9 })), 1.5*math.log(9), 1e-3, "10-90 width")
+near(now(interface_width(step, { from = {2.25, 3}, to = {14.25, 3}, low = 0.1, high = 0.9 })), 1.5*math.log(9), 1e-3, "along a line")
+near(now(interface_width(step)), 1.5*math.log(9), 0.05, "between the peaks")
+refused("say both low and high", interface_width, step, { low = 0.1 })
+same(now(interface_width(disc:field("even", 0.5))), nil, "no interface")
+refused('either axis = "x"', profile, c, { axis = "x", from = {1, 1} }); refused("'to' has to be a list of 2", profile, c, { from = {1, 1}, to = {1} })
+refused('has to be x, y, found "z"', profile, c, { axis = "z" })
+
 -- tables and parts in a run
 local m = model{ energy = c^2*(1 - c)^2 + 0.5*gradsq(c) }
 m:conserve(c, { mobility = 1 })
@@ -77,6 +104,6 @@ refused("has no table; its numbers go into m:record", function() m:tabulate{ top
 refused("expected measurements, found field", function() m:tabulate{ c } end)
 refused("expected measurements with a table first", function() m:tabulate{ every = 1 } end)
 m:record{ every = 1, d, d.mean_diameter, structure_factor(c).peak, top, top.perimeter, ch.mean_x }
-m:tabulate{ d, ch, way, correlation(c), lengths(c), structure_sectors(c), domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
+m:tabulate{ d, ch, curvature(c), orientation(c), profile(c), profile(c, { from = {0, 0}, to = {4, 4} }):as("slant"), way, correlation(c), lengths(c), structure_sectors(c), domains(c, { side = "below" }):as("matrix"), structure_factor(c), every = 2 }
 m:run{ duration = 3 }
 refused("before the first m:run", function() m:tabulate{ d } end)

@@ -1,6 +1,7 @@
 """Measurements against SciPy and scikit-image on random images: labels (scipy.ndimage.label, joined across periodic walls by
-hand), level lines (skimage.measure.find_contours, marching squares of its own), the structure factor (numpy.fft), Euler numbers, Crofton perimeters,
-second moments of regions and Otsu's threshold (skimage), run lengths (NumPy)."""
+hand), level lines (skimage.measure.find_contours, marching squares of its own), the structure factor (numpy.fft), Euler numbers,
+Crofton perimeters, second moments of regions and Otsu's threshold (skimage), run lengths, correlation and curvature (NumPy),
+profiles (SciPy)."""
 import os
 import subprocess
 import sys
@@ -22,7 +23,7 @@ def run(a, walls, level):
         a.astype("<f8").tofile(f.name)
         shape = list(a.shape[::-1]) + [1] * (3 - a.ndim)
         out = subprocess.run([probe, f.name, *map(str, shape), walls, repr(level)], check=True, capture_output=True, text=True).stdout
-    values, shells, lists = {}, [], {"shape": [], "chord": [], "correlation": [], "sector": []}
+    values, shells, lists = {}, [], {"shape": [], "chord": [], "correlation": [], "sector": [], "profile": []}
     for line in out.splitlines():
         words = line.split()
         if words[0] == "shell":
@@ -184,4 +185,43 @@ for seed in range(4):
                 wanted = run_lengths(a > 0.03, a.ndim - 1 - axis, walls == "ppp")
                 for _, length, n in v["chord"][v["chord"][:, 0] == axis]:
                     close("chords", n, wanted[int(length)], 0)
+
+# Curvature of the level line of a periodic image: derivatives by Fourier, interpolated to scikit-image's contour; the tensor of normals
+# from the contour's own pieces.
+a = smooth((96, 96), 5, 2, "wrap")
+v, _ = run(a, "ppp", 0.01)
+kx, ky = np.meshgrid(2 * np.pi * np.fft.fftfreq(96), 2 * np.pi * np.fft.fftfreq(96))
+spectrum = np.fft.fft2(a)
+cx, cy, cxx, cyy, cxy = (np.fft.ifft2(spectrum * f).real for f in (1j * kx, 1j * ky, -kx * kx, -ky * ky, -kx * ky))
+bent = -(cxx * cy**2 - 2 * cxy * cx * cy + cyy * cx**2) / (cx**2 + cy**2) ** 1.5
+wide = np.pad(a, ((0, 1), (0, 1)), mode="wrap")
+weight, there, normal = [], [], []
+for contour in skimage.measure.find_contours(wide, 0.01):
+    step = np.diff(contour, axis=0)
+    weight.append(np.hypot(*step.T))
+    there.append(0.5 * (contour[1:] + contour[:-1]))
+    normal.append(step / weight[-1][:, None])
+weight, there, normal = map(np.concatenate, (weight, there, normal))
+kappa = scipy.ndimage.map_coordinates(np.pad(bent, ((0, 1), (0, 1)), mode="wrap"), there.T, order=3)
+mean = np.average(kappa, weights=weight)
+deviation = np.sqrt(np.average((kappa - mean) ** 2, weights=weight))
+close("mean curvature", v["curvature"], mean, 0, 0.01 * deviation)
+close("deviation of curvature", v["curvature_deviation"], deviation, 0.01)
+close("Gauss and Bonnet", v["curvature_integral"], 2 * np.pi * v["euler_faces"], 0, 0.01 * (np.abs(kappa) * weight).sum())
+close("tensor of normals, xx", v["tensor_xx"], np.average(normal[:, 0] ** 2, weights=weight), 0, 0.002)  # steps are (y, x)
+close("tensor of normals, xy", v["tensor_xy"], -np.average(normal[:, 0] * normal[:, 1], weights=weight), 0, 0.002)
+
+# Gauss and Bonnet in a random bicontinuous volume, periodic: 4 pi times the Euler characteristic.
+a = smooth((48, 48, 48), 4, 7, "wrap")
+v, _ = run(a, "ppp", 0.0)
+close("Gauss and Bonnet in space", v["gauss_integral"], 4 * np.pi * v["euler_faces"], 0, 4 * np.pi * 0.5)
+
+# A line through the box and beyond its walls, linear interpolation by SciPy.
+for walls, mode in (("ppp", "grid-wrap"), ("mmm", "reflect")):
+    for shape in ((11, 14), (6, 7, 8)):
+        a = smooth(shape, 1, 3, "wrap")
+        v, _ = run(a, walls, 0.0)
+        places = [1.5 * n * np.arange(20) / 19 - 0.5 for n in shape]
+        wanted = scipy.ndimage.map_coordinates(a, places, order=1, mode=mode)
+        close("profile", np.abs(v["profile"][:, 0] - wanted).max(), 0, 0, 1e-12)
 print("measurements agree")

@@ -7,8 +7,10 @@
 #include "core/base/memory.h"
 #include "core/measure/chords.h"
 #include "core/measure/correlation.h"
+#include "core/measure/curvature.h"
 #include "core/measure/domains.h"
 #include "core/measure/interface.h"
+#include "core/measure/profile.h"
 #include "core/measure/statistics.h"
 #include "core/measure/structure.h"
 #include "core/measure/topology.h"
@@ -51,6 +53,23 @@ static void topology(const mt_grid *g, const double *a, double level, bool full)
     mt_topology_of(g, a, level, true, full, &t);
     printf("euler_%s %.17g\nboundary_%s %.17g\n", full ? "full" : "faces", t.euler, full ? "full" : "faces",
            t.boundary);
+}
+
+static void curvature(const mt_grid *g, const double *a, double level) {
+    mt_curvature c;
+    must(mt_curvature_of(g, a, level, true, 8, &c, &err));
+    printf("curvature %.17g\ncurvature_deviation %.17g\ncurvature_integral %.17g\ngauss_integral %.17g\n",
+           c.mean.mean, c.mean.deviation, c.mean.integral, c.gauss.integral);
+    printf("tensor_xx %.17g\ntensor_xy %.17g\n", c.tensor[0], c.tensor[3]);
+    mt_curvature_free(&c);
+}
+
+/* From the first corner of the box to 1.5 times its size. */
+static void profile(const mt_grid *g, const double *a) {
+    double v[20], from[3] = {0, 0, 0}, to[3];
+    for (int i = 0; i < 3; i++) to[i] = 1.5 * g->n[i] * g->h[i];
+    mt_profile_between(g, a, from, to, 20, v);
+    for (int i = 0; i < 20; i++) printf("profile %.17g\n", v[i]);
 }
 
 static void correlation(mt_sweeper *w, const double *a) {
@@ -105,6 +124,8 @@ int main(int argc, char **argv) {
     printf("otsu %.17g\n", mt_otsu_level(g, a));
     shapes(g, a, level);
     chords(g, a, level);
+    if (dim > 1) curvature(g, a, level);
+    profile(g, a);
     structure(g, a);
     mt_free(a);
     mt_grid_unref(&g);
