@@ -203,6 +203,14 @@ local function charts(d, rows)
   return '<h2>Charts</h2><div class="charts">' .. table.concat(out) .. '</div><p class="soft">All numbers are in ledger.csv.</p>'
 end
 
+local function tables(d)
+  if not d.tables or #d.tables == 0 then return "" end
+  local out = { '<h2>Tables</h2><table><tr><th scope="col">measurement</th><th scope="col">file in the run folder</th></tr>' }
+  for _, t in ipairs(d.tables) do out[#out + 1] = "<tr><td>" .. escape(t.measurement) .. "</td><td>" .. escape(t.file) .. "</td></tr>" end
+  out[#out + 1] = "</table>"
+  return table.concat(out)
+end
+
 local function health(d)
   local s = d.state
   if not s then return "" end
@@ -236,7 +244,7 @@ function M.page(d, rows, load)
   local title = (d.script or "run"):gsub("%.lua$", "")
   return table.concat { "<!DOCTYPE html>\n<html lang=\"en\"><head><meta charset=\"utf-8\"><meta name=\"viewport\" content=\"width=device-width, initial-scale=1\"><title>", escape(title),
     "</title><style>", style, "</style></head><body><main><h1>", escape(title), "</h1><p class=\"soft\">", escape(d.program or ""), ", ", escape(d.date or ""), "</p>",
-    verdict(d), what_was_run(d), stages(d, rows), pictures(d, load), charts(d, rows), health(d), cautions, provenance(d), "</main></body></html>\n" }
+    verdict(d), what_was_run(d), stages(d, rows), pictures(d, load), charts(d, rows), tables(d), health(d), cautions, provenance(d), "</main></body></html>\n" }
 end
 
 ---Rows of a ledger as written by core: text columns as text, empty cells as false.

@@ -53,4 +53,6 @@ need(list(ledger)[3:] == ["domains(c)", "domains(c).mean_diameter"] and ledger["
 with open(os.path.join(run.out, "summary.json")) as f:
     tables = json.load(f)["tables"]
 need([t["file"] for t in tables] == [f"tables/{n}.csv" for n in ("domains_c", "domains_c-2", "spectrum_fine", "matrix")], f"summary: {tables}")
+with open(os.path.join(run.out, "report.html")) as f:
+    need("tables/spectrum_fine.csv" in f.read(), "the report names the tables")
 print("tables are as promised")
