@@ -99,7 +99,7 @@ local function table_file(name)
 end
 
 local function open_tables(m)
-  if #m.tabulations == 0 then return end
+  if #m.tabulations == 0 or not M.folder then return end
   core.sub_folder(M.folder, "tables")
   for _, p in ipairs(m.tabulations) do
     p.head = { { "time", time_unit, false }, { "stage", "", true } }
@@ -111,7 +111,7 @@ local function open_tables(m)
 end
 
 local function tabulate(m, p, stage)
-  if p.last == m.time then return end
+  if p.last == m.time or not p.table then return end
   p.last = m.time
   for _, row in ipairs(measure.table_rows(p.measurement)) do
     local cells = { m.time / time_scale, stage }

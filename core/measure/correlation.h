@@ -5,9 +5,9 @@
  * S, with phi the mean of exp(i k r) over directions: cos(k r) in 1-D, J0(k r) in 2-D, sin(k r) / (k r) in
  * 3-D (Debye, Anderson & Brumberger, J. Appl. Phys. 28 (1957) 679, for scattering by two phases; from
  * memory). So it belongs to the trigonometric interpolant of the field, all directions count alike, and
- * mirror walls continue by reflection. Modes are gathered in steps of k of 1/16 of a shell, which is felt by
- * less than 2e-3 at the largest r and not at all (1e-5) at the first zero of a structure with several domains
- * to the box. */
+ * mirror walls continue by reflection. Modes are gathered in steps of k of 1/16 of a shell: against
+ * the sum mode by mode that moves C by less than 1e-3 at the largest r, and the first zero of a structure
+ * with several domains to the box by 1e-5. */
 #ifndef MT_MEASURE_CORRELATION_H
 #define MT_MEASURE_CORRELATION_H
 

@@ -20,54 +20,60 @@ typedef struct jet {
 } jet;
 
 static const int first_of[6] = {0, 1, 2, 0, 1, 2}, second_of[6] = {0, 1, 2, 1, 2, 0};
-static const double slope[5] = {1.0 / 12, -8.0 / 12, 0, 8.0 / 12, -1.0 / 12};
-static const double bend[5] = {-1.0 / 12, 16.0 / 12, -30.0 / 12, 16.0 / 12, -1.0 / 12};
+static const double slope[4] = {1.0 / 12, -8.0 / 12, 8.0 / 12, -1.0 / 12}; /* at -2, -1, 1, 2 */
+static const double bend[4] = {-1.0 / 12, 16.0 / 12, 16.0 / 12, -1.0 / 12};
+#define BEND_HERE (-30.0 / 12)
 
 static int cell_along(const mt_grid *g, int axis, int i) {
     int n = g->n[axis];
+    if (i >= 0 && i < n) return i;
     if (g->wall[axis] == MT_PERIODIC) return ((i % n) + n) % n;
     i = ((i % (2 * n)) + 2 * n) % (2 * n);
     return i < n ? i : 2 * n - 1 - i;
 }
 
-/* The field around a cell: two cells each way, in the plane of axes a and b. */
+/* Steps in the array from a cell to those two and one before and behind it along each axis. */
 typedef struct place {
-    const mt_grid *g;
-    const double *c;
-    int at[3][5]; /* cells along each axis */
+    const double *here;
+    ptrdiff_t to[3][4];
 } place;
 
-static double value(const place *p, int x, int y, int z) {
-    size_t nx = (size_t)p->g->n[0], ny = (size_t)p->g->n[1];
-    return p->c[((size_t)p->at[2][z] * ny + (size_t)p->at[1][y]) * nx + (size_t)p->at[0][x]];
+static place place_of(const mt_grid *g, const double *c, const int cell[3]) {
+    static const int off[4] = {-2, -1, 1, 2};
+    place p = {.here = c};
+    ptrdiff_t stride = 1;
+    for (int a = 0; a < g->dim; a++) {
+        int at = cell_along(g, a, cell[a]);
+        p.here += at * stride;
+        for (int k = 0; k < 4; k++) p.to[a][k] = (cell_along(g, a, cell[a] + off[k]) - at) * stride;
+        stride *= g->n[a];
+    }
+    return p;
 }
 
-static double along(const place *p, int axis, const double w[5]) {
-    double sum = 0;
-    int i[3] = {2, 2, 2};
-    for (i[axis] = 0; i[axis] < 5; i[axis]++) sum += w[i[axis]] * value(p, i[0], i[1], i[2]);
-    return sum;
+static double weighted(const double *here, const ptrdiff_t to[4], const double w[4]) {
+    return w[0] * here[to[0]] + w[1] * here[to[1]] + w[2] * here[to[2]] + w[3] * here[to[3]];
+}
+
+static double along(const place *p, int a, const double w[4]) {
+    return weighted(p->here, p->to[a], w);
 }
 
 static double mixed(const place *p, int a, int b) {
     double sum = 0;
-    int i[3] = {2, 2, 2};
-    for (i[a] = 0; i[a] < 5; i[a]++)
-        for (i[b] = 0; i[b] < 5; i[b]++)
-            if (i[a] != 2 && i[b] != 2) sum += slope[i[a]] * slope[i[b]] * value(p, i[0], i[1], i[2]);
+    for (int k = 0; k < 4; k++) sum += slope[k] * weighted(p->here + p->to[a][k], p->to[b], slope);
     return sum;
 }
 
 static jet jet_at(const mt_grid *g, const double *c, const int cell[3]) {
-    place p = {.g = g, .c = c};
+    place p = place_of(g, c, cell);
     jet j = {{0}, {0}};
-    for (int a = 0; a < 3; a++)
-        for (int k = 0; k < 5; k++) p.at[a][k] = a < g->dim ? cell_along(g, a, cell[a] + k - 2) : 0;
     for (int a = 0; a < g->dim; a++) j.d[a] = along(&p, a, slope) / g->h[a];
     for (int m = 0; m < 6; m++) {
         int a = first_of[m], b = second_of[m];
         if (a >= g->dim || b >= g->dim) continue;
-        j.dd[m] = (a == b ? along(&p, a, bend) : mixed(&p, a, b)) / (g->h[a] * g->h[b]);
+        double sum = a == b ? along(&p, a, bend) + BEND_HERE * *p.here : mixed(&p, a, b);
+        j.dd[m] = sum / (g->h[a] * g->h[b]);
     }
     return j;
 }

@@ -264,7 +264,7 @@ static double plane_across_axis(const double *n, int axis) {
 
 /* Spanned by the remaining axis and the step that is the normal with one sign turned; rectangles. */
 static double plane_across_diagonal(const double *n, step normal) {
-    int along[2], free_axis = 3, k = 0;
+    int along[2] = {0, 0}, free_axis = 0, k = 0;
     for (int a = 0; a < 3; a++) {
         if (normal.s[a])
             along[k++] = a;
