@@ -118,7 +118,7 @@ static void varying_mobility_keeps_equipartition(void **state) {
             check_chi(&s, equipartition, "drawn");
             mt_step_options o = {.accuracy = 1e-2};
             check_ok(mt_model_start(s.m, &o, 0, &s.err), &s.err);
-            check_ok(mt_model_advance(s.m, 6, NULL, NULL, &s.err), &s.err);
+            check_ok(mt_model_advance(s.m, relax ? 2 : 0.3, NULL, NULL, &s.err), &s.err);
             print_message("%llu steps of up to %g\n", (unsigned long long)mt_model_state(s.m)->steps,
                           mt_model_state(s.m)->step_max);
             check_chi(&s, equipartition, relax ? "relaxing" : "conserved");
