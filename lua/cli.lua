@@ -89,7 +89,7 @@ local function load_script(path)
   if run.script_text:sub(1, 1) == "\27" then core.fail("'" .. path .. "' is compiled Lua, a binary file; a script is its text") end
   local own = core.folder(folder, "open")
   require("grid").folder = own
-  local env = require("sandbox").make(own, models.model)
+  local env = require("sandbox").make(own, models.model, name)
   local chunk, message = core.load_text(text.source(run.script_text), "@" .. name, env)
   if not chunk then core.fail(message) end
   return chunk

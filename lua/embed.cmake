@@ -1,10 +1,10 @@
-# Writes OUT: a C file with the texts of FILES (Lua modules) as arrays, by name without the ending. Character
-# constants, because a number above 127 would not fit a char.
+# Writes OUT: a C file with the texts of FILES (Lua modules) as arrays, by name without the ending: lua/run.lua is "run",
+# lua/models/grains.lua is "models/grains". Character constants, because a number above 127 would not fit a char.
 set(arrays "")
 set(table "")
 set(number 0)
 foreach(file ${FILES})
-  get_filename_component(name ${file} NAME_WE)
+  string(REGEX REPLACE "^.*/lua/(.*)[.]lua$" "\\1" name ${file})
   file(READ ${file} hex HEX)
   file(SIZE ${file} size)
   string(REGEX REPLACE "([0-9a-f][0-9a-f])" "'\\\\x\\1'," bytes "${hex}")

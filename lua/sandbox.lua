@@ -13,7 +13,14 @@ local sources = require "sources"
 
 local M = {}
 
-local bundled = { thermo = true }
+local bundled = { thermo = true } -- modules of the program itself; those in lua/models are scripts like the user's own
+
+local function bundled_names()
+  local names = text.keys(core.models)
+  for name in next, bundled do names[#names + 1] = name end
+  table.sort(names)
+  return names
+end
 
 local ordered = { number = true, string = true, boolean = true }
 
@@ -92,8 +99,9 @@ local function printer(...)
   core.write(1, table.concat(t, "\t") .. "\n")
 end
 
----Makes the environment; `folder` is the script's own folder (files beside the script), `model` makes models.
-function M.make(folder, model)
+---Makes the environment; `folder` is the script's own folder (files beside the script), `model` makes models, `script` is the
+---name of the script's file there.
+function M.make(folder, model, script)
   local loaded = {}
   local env = {
     assert = assert, error = error, ipairs = ipairs, select = select, tonumber = tonumber, tostring = tostring, type = type,
@@ -117,14 +125,24 @@ function M.make(folder, model)
   env.clock = core.clock -- wall time in seconds, for timing; not for decisions that a run should repeat
   env.unit, env.degC, env.input, env.model = units.unit, units.degC, inputs.input, model
 
-  local function load_file(name)
+  -- A file beside the script comes before the bundled model of its name: what lies there is what its author means, and a model
+  -- that a later version brings changes no older script. The script itself is no module.
+  local function find(name)
     local file = name .. ".lua"
-    if not core.has(folder, file) then
-      core.fail("require: there is no module '" .. name .. "' (bundled: thermo; or a file " .. file .. " beside the script)")
+    if file ~= script and core.has(folder, file) then
+      sources.note(folder, file)
+      return text.source(core.read(folder, file)), "@" .. file
     end
-    local chunk, message = core.load_text(text.source(core.read(folder, file)), "@" .. file, env)
+    -- a chunk name without @: errors name the line of the script that called
+    if core.models[name] then return core.models[name], "=" .. name end
+    core.fail("require: there is no module '" .. name .. "' (bundled: " .. table.concat(bundled_names(), ", ") .. "; or a file " ..
+      file .. " beside the script)" .. text.hint(name, bundled_names()))
+  end
+
+  local function load_module(name)
+    local source, chunk_name = find(name)
+    local chunk, message = core.load_text(source, chunk_name, env)
     if not chunk then core.fail(message) end
-    sources.note(folder, file)
     return chunk(name)
   end
 
@@ -133,7 +151,7 @@ function M.make(folder, model)
     if bundled[name] then return require(name) end
     if loaded[name] == nil then
       loaded[name] = true
-      local v = load_file(name)
+      local v = load_module(name)
       if v ~= nil then loaded[name] = v end
     end
     return loaded[name]
