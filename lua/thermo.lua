@@ -104,32 +104,28 @@ function Solution:spinodal(T)
   return found[1], found[#found]
 end
 
+---Where the common tangent touches an energy f(x) with the slope(x), numbers between 0 and 1, that is concave from left to
+---right and convex on either side: both compositions. Each slope has one match on either side; bisection until the intercepts
+---are one.
+function M.common_tangent(f, slope_at, left, right)
+  local tiny, top = 1e-300, 1 - 1e-16
+  local function match(s, a, b)
+    if slope_at(a) >= s then return a elseif slope_at(b) <= s then return b end
+    return bisect(function(x) return slope_at(x) - s end, a, b)
+  end
+  local function both(s) return match(s, tiny, left), match(s, right, top) end
+  return both(bisect(function(s)
+    local x, z = both(s)
+    return (f(x) - s * x) - (f(z) - s * z)
+  end, slope_at(right), slope_at(left)))
+end
+
 ---Compositions of the two phases in equilibrium (common tangent) at a temperature: two numbers, or nil.
----For each composition left of the spinodal the tangent's slope has one match on the right; bisection on equal intercepts.
 function Solution:binodal(T)
   local L = terms_at(self, T)
   local a, b = self:spinodal(T)
   if not a then return nil end
-  local tiny = 1e-300
-  local function match(x) -- right of b with the same slope
-    local s = slope(x, T, L)
-    local top = 1 - 1e-16
-    if slope(top, T, L) < s then return top end
-    return bisect(function(z) return slope(z, T, L) - s end, b, top)
-  end
-  local function gap(x)
-    local z = match(x)
-    return (g(z, T, L) - slope(z, T, L) * z) - (g(x, T, L) - slope(x, T, L) * x)
-  end
-  local low
-  do -- slopes that the right branch reaches at all start at its minimum, at the spinodal b
-    local least = slope(b, T, L)
-    low = slope(tiny, T, L) >= least and tiny or bisect(function(z) return slope(z, T, L) - least end, tiny, a)
-  end
-  -- bisection in log x, since dilute phases may be very dilute
-  local lx = bisect(function(u) return gap(math.exp(u)) end, math.log(math.max(low * (1 + 1e-9), 1e-290)), math.log(a))
-  local x = math.exp(lx)
-  return x, match(x)
+  return M.common_tangent(function(x) return g(x, T, L) end, function(x) return slope(x, T, L) end, a, b)
 end
 
 ---Second derivative of the energy per volume (J/m^3) at a composition and temperature.
