@@ -41,6 +41,7 @@ function M.energy(t)
 end
 
 ---Says how p and T of a model with this energy move: dp/dt = -rate dF/dp, dT/dt = diffusivity laplacian(T) + latent dp/dt.
+---The heat of the box, the mean of T - latent p, is kept within the accuracy of the steps.
 function M.move(m, t)
   local o = options(t, "p", "T")
   local freezing = -o.rate*m:potential(o.p)
