@@ -9,7 +9,7 @@ local run = require "run"
 local sandbox = require "sandbox"
 local show = require "show"
 
-local M = {}
+local M = { failure = nil } -- why the last run did not reach its end
 
 local greeting = [[
 mottle %s console. help() shows what can be done; Ctrl-D ends.
@@ -166,6 +166,7 @@ local function running(m, o)
   ran[m.grid] = m
   local ok, message = pcall(run.run, m, o)
   if not run.quiet and core.is_terminal(2) then core.write(2, "\r\27[K") end
+  M.failure = not ok and tostring(message) or nil
   if not ok then error(message, 0) end
   if run.quiet then return end
   local s = core.state(m.core)
@@ -226,6 +227,9 @@ end
 local Session = {}
 Session.__index = Session
 
+-- What belongs to typing goes where the prompt is: standard output may be a file.
+local function on_screen(words) core.write(core.is_terminal(1) and 1 or 2, words) end
+
 function Session:prompt()
   if not self.keyboard then return nil end
   return self.pending and "      > " or "mottle> "
@@ -285,7 +289,7 @@ function Session:loop(words)
     local ending = core.forget_stop()
     if what == left then return 0 end
     if ok and what == "end" then
-      if self.keyboard then core.write(1, "\n") end
+      if self.keyboard then on_screen("\n") end
       return 0
     end
     local code = not ok and self:failed(what, words) or nil
@@ -293,7 +297,7 @@ function Session:loop(words)
     if code then return code end
     if ok and what == "stopped" then
       self.pending = nil
-      core.write(1, "\n")
+      on_screen("\n")
     end
   end
 end
@@ -309,7 +313,7 @@ local function keep_folder(session, o)
     if not run.folder then return end
     core.stop_heeded()
     core.put(run.folder, "script.lua", table.concat(session.kept, "\n") .. "\n")
-    run.close()
+    run.close(M.failure)
     if not run.quiet then core.write(1, require("report").words(run)) end
   end
 end
@@ -320,7 +324,7 @@ function M.run(o, words)
   local session = setmetatable({ env = environment(), interactive = core.is_terminal(0), keyboard = keyboard, count = 0, kept = {} }, Session)
   run.script_name, run.script_text, run.quiet, run.began = "console", "", o.quiet, core.clock()
   keep_folder(session, o)
-  if keyboard and not o.quiet then core.write(1, greeting:format(core.machine().version)) end
+  if keyboard and not o.quiet then on_screen(greeting:format(core.machine().version)) end
   local code = session:loop(words)
   if session.close then session.close() end
   return code

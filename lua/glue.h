@@ -32,6 +32,8 @@ extern volatile sig_atomic_t glue_stop;
 extern volatile sig_atomic_t glue_end;
 /* Set while a line is being typed, when there is no step to finish. */
 extern volatile sig_atomic_t glue_waiting;
+/* The signals that the program catches. */
+void glue_signals(sigset_t *set);
 /* Whether the script is to end: asked for, and the run is not being closed already. */
 bool glue_stopping(void);
 

@@ -18,6 +18,12 @@ bool glue_stopping(void) {
     return glue_stop && !closing;
 }
 
+void glue_signals(sigset_t *set) {
+    sigemptyset(set);
+    sigaddset(set, SIGINT);
+    sigaddset(set, SIGTERM);
+}
+
 glue *glue_of(lua_State *L) {
     return *(glue **)lua_getextraspace(L);
 }
@@ -146,11 +152,19 @@ static int is_terminal(lua_State *L) {
     return 1;
 }
 
+/* The pool's threads start with these signals blocked and keep them so: they have to reach the main thread,
+ * which may be waiting for the keyboard. */
 static int set_threads(lua_State *L) {
     glue *g = glue_of(L);
     mt_error err = {0};
     mt_pool *pool;
-    glue_check(L, mt_pool_new(&pool, (int)luaL_checkinteger(L, 1), &err), &err);
+    int n = (int)luaL_checkinteger(L, 1);
+    sigset_t ours, before;
+    glue_signals(&ours);
+    pthread_sigmask(SIG_BLOCK, &ours, &before);
+    mt_status st = mt_pool_new(&pool, n, &err);
+    pthread_sigmask(SIG_SETMASK, &before, NULL);
+    glue_check(L, st, &err);
     mt_pool_free(&g->pool); /* before any grid is made */
     g->pool = pool;
     return 0;

@@ -54,10 +54,8 @@ static void take(char *text) {
 /* Signals are let in while nothing is being read only, so the terminal is never left half set. */
 static line from_keyboard(const char *prompt) {
     sigset_t ours, before;
-    sigemptyset(&ours);
-    sigaddset(&ours, SIGINT);
-    sigaddset(&ours, SIGTERM);
-    sigprocmask(SIG_BLOCK, &ours, &before);
+    glue_signals(&ours);
+    pthread_sigmask(SIG_BLOCK, &ours, &before);
     complete = false;
     glue_waiting = 1;
     rl_callback_handler_install(prompt, take);
@@ -76,7 +74,7 @@ static line from_keyboard(const char *prompt) {
         typed = (line){NULL, 0, LINE_STOPPED};
     }
     glue_waiting = 0;
-    sigprocmask(SIG_SETMASK, &before, NULL);
+    pthread_sigmask(SIG_SETMASK, &before, NULL);
     return typed;
 }
 

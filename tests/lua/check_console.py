@@ -201,7 +201,7 @@ class Terminal:
         until = time.time() + seconds
         while text not in self.seen[self.at:]:
             if time.time() > until or not (self.read(until - time.time())):
-                sys.exit(f"FAILED: expected {text!r} after {self.seen[self.at:][-2000:]!r}")
+                sys.exit(f"FAILED: expected {text!r} after {self.seen[self.at:][-2000:]!r}, before {self.seen[:self.at][-300:]!r}")
         end = self.seen.index(text, self.at) + len(text)
         part, self.at = self.seen[self.at:end], end
         return part
@@ -249,6 +249,9 @@ need("to end at once" not in t.seen, "Ctrl-C at the prompt promises nothing")
 t.send("unfinished words\x03")
 t.expect("mottle> ")
 need("\r\n3\r\n" in t.line("x"), "Ctrl-C gives a line up, no more")
+for _ in range(50):  # at once after the prompt, when the line is not waited for yet
+    t.send("\x03")
+    t.expect("mottle> ")
 t.send("while true do end\r")
 t.expect("\n")
 time.sleep(0.3)
@@ -272,6 +275,19 @@ need("\r\ntrue\r\n" in t.line("abs(m.time - before - 5) < 1e-6"), "from there")
 t.send("\x04")
 t.end(0)
 need(not os.path.exists(os.path.join(folder, ".mottle_history")) and sorted(os.listdir(folder)) == ["kept.run"], "the lines of a session are kept nowhere")
+
+t = Terminal("--into", "stopped.run")
+t.expect("mottle> ")
+for line in shortest.splitlines():
+    t.line(line)
+t.send("m:run{ duration = 1e7, step = 0.01 }\r")
+t.expect(" %  time ")
+t.send("\x03")
+t.expect("mottle> ")
+t.send("\x04")
+t.end(0)
+with open(os.path.join(folder, "stopped.run", "report.html")) as f:
+    need("did not reach its end" in f.read(), "the report of a stopped run says so")
 
 t = Terminal("--quiet")
 need(t.expect("mottle> ").count("\n") == 0, "--quiet leaves the greeting out")
