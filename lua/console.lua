@@ -172,9 +172,9 @@ local function running(m, o)
   local s = core.state(m.core)
   core.write(1, string.format("time %s after %d steps in %s%s\n", text.time(s.time, units.used), s.steps - before,
     core.time_text(core.clock() - began), s.energy == s.energy and "; energy " .. text.number(s.energy) or ""))
-  if not run.folder and not told_files and #m.pictures + #m.saves > 0 then
+  if not run.folder and not told_files and #m.pictures + #m.saves + #m.tabulations > 0 then
     told_files = true
-    core.write(1, "(pictures and saved fields are written in a console started with --into FOLDER only)\n")
+    core.write(1, "(pictures, fields and tables are written in a console started with --into FOLDER only)\n")
   end
 end
 

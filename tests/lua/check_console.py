@@ -125,8 +125,9 @@ rows = [line.split() for line in out[out.index("wavelength(c)\n"):].splitlines()
 need(re.search(r"^\(16 of 1\d\d rows\)$", out, re.M) and rows[0][0] == "0" and rows[-1][0] == "150", f"the ledger: {out}")
 quiet = piped(shortest + "m:run{ duration = 100 }\nm:run{ duration = 50 }\nm:energy()\n", "--quiet")
 need(re.fullmatch(r"energy = \d+\.\d+\n", quiet[0]) and quiet[1] == "", f"--quiet: {quiet}")
-out, err = piped(shortest + "m:picture{ c }\nm:run{ duration = 1 }\nm:run{ duration = 1 }")
-need(out.count("--into FOLDER") == 1, "that no pictures are written is told once")
+for asked in ("m:picture{ c }", "m:save{ c, every = 1 }", "m:tabulate{ structure_factor(c), every = 1 }"):
+    out, err = piped(shortest + asked + "\nm:run{ duration = 1 }\nm:run{ duration = 1 }")
+    need(out.count("--into FOLDER") == 1, f"that {asked} writes nothing is told once: {out}")
 # what plan does leaves the run as it is
 again = piped(shortest + "plan(m)\nm:run{ duration = 100 }\nm:run{ duration = 50 }\nm:energy()\n", "--quiet")
 need(again[0].endswith(quiet[0]), "plan(m) changes no bit of a run")
