@@ -272,18 +272,31 @@ static double option(lua_State *L, int index, const char *name) {
     return v;
 }
 
+/* { accuracy, step, longest, method } at index 2 */
+static mt_step_options step_options(lua_State *L) {
+    static const mt_stepper steppers[] = {MT_STEPPER_SBDF2, MT_STEPPER_EULER, MT_STEPPER_ETDRK2};
+    luaL_checktype(L, 2, LUA_TTABLE);
+    int method = (int)option(L, 2, "method");
+    return (mt_step_options){.accuracy = option(L, 2, "accuracy"),
+                             .fixed = option(L, 2, "step"),
+                             .longest = option(L, 2, "longest"),
+                             .stepper = steppers[method >= 0 && method < 3 ? method : 0],
+                             .free_energy = true};
+}
+
+/* start(model, options, time), options(model, options) */
 static int start(lua_State *L) {
     mt_error err = {0};
     mt_model *m = model_at(L, 1);
-    luaL_checktype(L, 2, LUA_TTABLE);
-    mt_step_options o = {.accuracy = option(L, 2, "accuracy"),
-                         .fixed = option(L, 2, "step"),
-                         .longest = option(L, 2, "longest")};
-    static const mt_stepper steppers[] = {MT_STEPPER_SBDF2, MT_STEPPER_EULER, MT_STEPPER_ETDRK2};
-    int method = (int)option(L, 2, "method");
-    o.stepper = steppers[method >= 0 && method < 3 ? method : 0];
-    o.free_energy = true;
+    mt_step_options o = step_options(L);
     glue_check(L, mt_model_start(m, &o, luaL_optnumber(L, 3, 0), &err), &err);
+    return 0;
+}
+
+static int set_options(lua_State *L) {
+    mt_model *m = model_at(L, 1);
+    mt_step_options o = step_options(L);
+    mt_model_options(m, &o);
     return 0;
 }
 
@@ -397,6 +410,7 @@ void glue_open_motion(lua_State *L) {
         {"source", source},
         {"carry", carry},
         {"keep_mean", keep_mean},
+        {"step_options", set_options},
         {"thermal", thermal},
         {"fluctuations", fluctuations},
         {NULL, NULL},

@@ -353,10 +353,12 @@ function M.run(m, o)
   if M.plan then M.plan(m, run, o) end -- does not come back
   if not M.folder and M.open_folder then M.open_folder() end
   local fresh = not m.started
+  local steps = { accuracy = o.accuracy, step = o.step, longest = o.longest, method = o.method_number or 0 }
+  if not fresh then core.step_options(m.core, steps) end
   if fresh then
     rawset(m, "drawn", {})
     rawset(m, "stages", {})
-    core.start(m.core, { accuracy = o.accuracy, step = o.step, longest = o.longest, method = o.method_number or 0 }, run.t0)
+    core.start(m.core, steps, run.t0)
     warn_of_matrix(m)
     rawset(m, "started", true)
     clock_model = m

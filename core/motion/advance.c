@@ -140,11 +140,16 @@ static void note_state(mt_model *m) {
             m->state.mean_drift = fmax(m->state.mean_drift, fabs(m->mover[i].u[0] - m->mover[i].mean_start));
 }
 
+void mt_model_options(mt_model *m, const mt_step_options *options) {
+    m->options = options ? *options : (mt_step_options){.free_energy = true};
+    if (m->options.accuracy <= 0) m->options.accuracy = MT_ACCURACY;
+    m->ratio_old = 0;
+}
+
 mt_status mt_model_start(mt_model *m, const mt_step_options *options, double time, mt_error *err) {
     mt_status st = mt_model_derive(m, err);
     if (st) return st;
-    m->options = options ? *options : (mt_step_options){.free_energy = true};
-    if (m->options.accuracy <= 0) m->options.accuracy = MT_ACCURACY;
+    mt_model_options(m, options);
     if (!m->next) st = allocate(m, err);
     if (st) {
         mt_model_forget(m);

@@ -158,6 +158,9 @@ MT_API mt_status mt_model_fluctuations(mt_model *m, const mt_field *field, const
 MT_API mt_status mt_model_start(mt_model *m, const mt_step_options *options, double time,
                                 mt_error *err) MT_MUST_USE;
 
+/* Other options from the present state on, which stays as it is (NULL: the defaults). */
+MT_API void mt_model_options(mt_model *m, const mt_step_options *options);
+
 /* Advances to exactly `until`, landing on every knot of a param's history on the way. On return (also on
  * ESTOPPED) the fields' values hold the state at mt_model_state()->time. tick may be NULL. Any failure leaves
  * the last good state in the fields' values. */

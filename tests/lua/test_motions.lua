@@ -85,6 +85,17 @@ mq:relax(q, { rate = 1 })
 set(q, 0.3 + noise.equilibrium{ model = mq, field = q, kT = 0.02, thickness = 0.5, seed = 1 })
 near(now(mean(q)), 0.3, 1e-14, "a start's mean"); near(now(variance(q)), 0.02*(31*15 - 1)/(32*16), 0.02*3*math.sqrt(2/(31*15)), "drawn")
 
+-- options of a later run are its own
+local z = g:field("z", cosine(0, 1))
+local mz = model{}
+mz:evolve(z, -z)
+mz:record{ mean(z), every = 1 }
+mz:run{ duration = 1, step = 0.01 }
+local fine = amplitude_of(z)*math.exp(1) - 1
+mz:run{ duration = 1, step = 0.1 }
+local coarse = amplitude_of(z)*math.exp(2) - 1
+if math.abs(coarse) < 20*math.abs(fine) then error("the second run kept the first one's steps") end
+
 -- what is refused, and how
 refused("has to be even", filter, c, function(kx, ky) return kx end)
 refused("(0, 0)", filter, c, function(q) return 1/q end)
