@@ -274,13 +274,14 @@ static double option(lua_State *L, int index, const char *name) {
 
 /* { accuracy, step, longest, method } at index 2 */
 static mt_step_options step_options(lua_State *L) {
-    static const mt_stepper steppers[] = {MT_STEPPER_SBDF2, MT_STEPPER_EULER, MT_STEPPER_ETDRK2};
+    static const mt_stepper steppers[] = {MT_STEPPER_SBDF3, MT_STEPPER_SBDF2, MT_STEPPER_EULER,
+                                          MT_STEPPER_ETDRK2};
     luaL_checktype(L, 2, LUA_TTABLE);
     int method = (int)option(L, 2, "method");
     return (mt_step_options){.accuracy = option(L, 2, "accuracy"),
                              .fixed = option(L, 2, "step"),
                              .longest = option(L, 2, "longest"),
-                             .stepper = steppers[method >= 0 && method < 3 ? method : 0],
+                             .stepper = steppers[method >= 0 && method < 4 ? method : 0],
                              .free_energy = true};
 }
 
@@ -294,9 +295,10 @@ static int start(lua_State *L) {
 }
 
 static int set_options(lua_State *L) {
+    mt_error err = {0};
     mt_model *m = model_at(L, 1);
     mt_step_options o = step_options(L);
-    mt_model_options(m, &o);
+    glue_check(L, mt_model_options(m, &o, &err), &err);
     return 0;
 }
 

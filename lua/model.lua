@@ -218,9 +218,9 @@ function Model:when(condition, f)
   hook(self, "when", self.when_hooks, condition, f)
 end
 
-local methods = { SBDF2 = 0, Euler = 1, ETDRK2 = 2 }
+local methods = { SBDF3 = 0, SBDF2 = 1, Euler = 2, ETDRK2 = 3 }
 
----m:run{ duration = 2000 } or m:run(schedule{...}); also accuracy, step (fixed), longest, method ("SBDF2", "ETDRK2", "Euler")
+---m:run{ duration = 2000 } or m:run(schedule{...}); also accuracy, step (fixed), longest, method ("SBDF3", "SBDF2", "ETDRK2", "Euler")
 function Model:run(t)
   check_self(self, "run")
   if not self.core then core.fail("run: nothing moves yet; declare it with m:conserve, m:relax or m:evolve") end
@@ -229,13 +229,13 @@ function Model:run(t)
     o = options.read(t, "run", { { "duration", "positive" }, { "schedule", "table" }, { "accuracy", "positive" }, { "step", "positive" },
       { "longest", "positive" }, { "method", "string" } })
     if o.method and not methods[o.method] then
-      core.fail("run: method has to be \"SBDF2\", \"ETDRK2\" or \"Euler\", found \"" .. o.method .. '"')
+      core.fail("run: method has to be \"SBDF3\", \"SBDF2\", \"ETDRK2\" or \"Euler\", found \"" .. o.method .. '"')
     end
     if (o.duration and 1 or 0) + (o.schedule and 1 or 0) ~= 1 then core.fail("run: say either duration or schedule") end
     if o.schedule and not schedule.is(o.schedule) then core.fail("run: schedule has to be what schedule{...} gave") end
   end
   self:settle()
-  o.method_number = methods[o.method or "SBDF2"]
+  o.method_number = methods[o.method or "SBDF3"]
   M.runner(self, o)
 end
 

@@ -7,7 +7,8 @@
 
 #include "core/base/memory.h"
 
-#define GROWTH_MOST 2.0 /* variable-step BDF2 is zero-stable below 1 + sqrt 2 (Grigorieff 1983) */
+#define GROWTH_MOST 2.0  /* variable-step BDF2 is zero-stable below 1 + sqrt 2 (Grigorieff 1983) */
+#define GROWTH_THIRD 1.4 /* the third-order formula below 1.534 (Calvo, Grande & Grigorieff 1990; from memory) */
 #define REJECTIONS_MOST 60
 #define ENERGY_ROUNDING 1e-11 /* rise of the energy, relative to its size, that is laid to rounding */
 #define LOG_FAR -0.02         /* an argument of a logarithm this far out of its domain rejects the step */
@@ -25,9 +26,6 @@ static mt_status allocate(mt_model *m, mt_error *err) {
     for (int i = 0; i < m->n && !st; i++) {
         mt_mover *v = &m->mover[i];
         st = mt_new(&v->u, doubles, sizeof(double), "the spectrum of a field", err);
-        if (v->motion == MT_MOTION_STILL) continue;
-        if (!st) st = mt_new(&v->um, doubles, sizeof(double), "the spectrum of a field", err);
-        if (!st) st = mt_new(&v->r, doubles, sizeof(double), "the right-hand side of a field", err);
     }
     if (!st) st = mt_new(&m->column_tally, p->spectrum->columns * width, sizeof(double), "sums", err);
     if (!st) st = mt_new(&m->totals, width, sizeof(double), "sums", err);
@@ -35,13 +33,40 @@ static mt_status allocate(mt_model *m, mt_error *err) {
     return st;
 }
 
+static int depth_of(mt_stepper stepper) {
+    return stepper == MT_STEPPER_SBDF3 ? 2 : 1;
+}
+
+/* The past that the stepper needs; another stepper keeps what there is of it. */
+static mt_status remember(mt_model *m, mt_stepper stepper, mt_error *err) {
+    size_t doubles = m->program.spectrum->doubles;
+    mt_status st = MT_OK;
+    int depth = depth_of(stepper);
+    for (int i = 0; i < m->n; i++)
+        for (int j = 0; j < depth && m->mover[i].motion != MT_MOTION_STILL && !st; j++) {
+            mt_mover *v = &m->mover[i];
+            if (!v->past_u[j])
+                st = mt_new(&v->past_u[j], doubles, sizeof(double), "the spectrum of a field", err);
+            if (!st && !v->past_r[j])
+                st = mt_new(&v->past_r[j], doubles, sizeof(double), "the right-hand side of a field", err);
+        }
+    if (st) return mt_context(err, st, "this run");
+    if (m->stored && depth != m->depth)
+        m->levels = 0; /* R of the present state is not where it is looked for */
+    if (m->stored && depth != m->depth) m->stored = false, m->stale = true;
+    m->depth = depth;
+    if (m->levels > depth) m->levels = depth;
+    return MT_OK;
+}
+
 mt_status mt_model_bytes(mt_model *m, size_t *bytes, mt_error *err) {
     mt_status st = mt_model_derive(m, err);
     if (st) return st;
     size_t one = m->program.spectrum->doubles * sizeof(double), width = 3 * (size_t)m->n + 1;
     *bytes = mt_program_bytes(&m->program, m->column_doubles);
+    size_t past = 1 + 2 * (size_t)(m->depth ? m->depth : depth_of(MT_STEPPER_DEFAULT));
     for (int i = 0; i < m->n; i++) {
-        *bytes += m->mover[i].motion == MT_MOTION_STILL ? one : 3 * one;
+        *bytes += m->mover[i].motion == MT_MOTION_STILL ? one : past * one;
         *bytes += m->grid->cells * sizeof(double); /* the field's values in real space */
     }
     *bytes += m->program.spectrum->columns * width * sizeof(double);
@@ -57,7 +82,7 @@ static mt_status take_values(mt_model *m, mt_error *err) {
         v->version = v->field->version;
         v->mean_start = v->u[0];
     }
-    m->history = MT_HISTORY_NONE;
+    m->levels = 0, m->stored = m->stale = false;
     m->dt_next = 0;
     return st ? st : mt_step_refresh(m, true, err);
 }
@@ -140,17 +165,18 @@ static void note_state(mt_model *m) {
             m->state.mean_drift = fmax(m->state.mean_drift, fabs(m->mover[i].u[0] - m->mover[i].mean_start));
 }
 
-void mt_model_options(mt_model *m, const mt_step_options *options) {
-    m->options = options ? *options : (mt_step_options){.free_energy = true};
+mt_status mt_model_options(mt_model *m, const mt_step_options *options, mt_error *err) {
+    m->options = options ? *options : (mt_step_options){.stepper = MT_STEPPER_DEFAULT, .free_energy = true};
     if (m->options.accuracy <= 0) m->options.accuracy = MT_ACCURACY;
     m->ratio_old = 0;
+    return remember(m, m->options.stepper, err);
 }
 
 mt_status mt_model_start(mt_model *m, const mt_step_options *options, double time, mt_error *err) {
     mt_status st = mt_model_derive(m, err);
     if (st) return st;
-    mt_model_options(m, options);
     if (!m->next) st = allocate(m, err);
+    if (!st) st = mt_model_options(m, options, err);
     if (st) {
         mt_model_forget(m);
         return mt_context(err, st, "this run");
@@ -274,12 +300,18 @@ static bool multistep(const mt_model *m) {
 
 /* The error of a step relative to the change over it goes with dt^2 (two-step) or dt. A proportional-integral
  * rule (Gustafsson, ACM Trans. Math. Softw. 17 (1991) 533) damps the see-saw of the plain one. */
-static double growth(const mt_model *m, double ratio) {
-    bool second = m->history == MT_HISTORY_STEP && multistep(m) && m->options.stepper == MT_STEPPER_SBDF2;
-    double order = second ? 2 : 1, old = m->ratio_old > 0 ? m->ratio_old : ratio;
-    if (ratio <= 1e-12) return GROWTH_MOST;
+static double growth(const mt_model *m, const mt_attempt *a) {
+    double ratio = a->ratio, order = a->order, old = m->ratio_old > 0 ? m->ratio_old : ratio;
+    double most = a->order > 2 ? GROWTH_THIRD : GROWTH_MOST;
+    if (ratio <= 1e-12) return most;
     double f = 0.9 * pow(ratio, -0.8 / order) * pow(fmax(old, 1e-12), 0.3 / order);
-    return fmin(GROWTH_MOST, fmax(0.3, f));
+    return fmin(most, fmax(0.3, f));
+}
+
+/* A method of order p makes the error e with a step in proportion to e^(1/p): how much shorter it is for
+ * another order. */
+static double shorter(const mt_model *m, int from, int to) {
+    return to < from ? pow(m->options.accuracy, 1.0 / to - 1.0 / from) : 1;
 }
 
 static mt_status too_small(mt_model *m, mt_status why, mt_error *err) {
@@ -305,17 +337,18 @@ static mt_status too_small(mt_model *m, mt_status why, mt_error *err) {
 }
 
 static void rejected(mt_model *m, const mt_attempt *a, bool by_error) {
-    bool was_two_step = m->history == MT_HISTORY_STEP && multistep(m);
+    double cut = by_error ? fmax(0.1, 0.8 * pow(a->ratio, -1.0 / a->order)) : 0.25;
+    int levels = m->levels < m->depth ? m->levels : m->depth - 1; /* the oldest was written over */
     m->state.rejected++;
-    if (m->history != MT_HISTORY_STORED) m->history = MT_HISTORY_STORED;
-    double cut = by_error ? fmax(0.1, 0.8 / sqrt(a->ratio)) : 0.25;
-    if (was_two_step) cut = fmin(cut, sqrt(m->options.accuracy)); /* restarting with a one-step method */
+    m->stored = true;
+    if (multistep(m)) cut *= shorter(m, m->levels + 1, levels + 1);
+    m->levels = levels;
     m->dt_next = a->dt * cut;
     m->ratio_old = 0;
 }
 
 static void accepted(mt_model *m, const mt_attempt *a) {
-    double f = growth(m, a->ratio);
+    double f = growth(m, a);
     bool cut_short = a->dt < 0.99 * m->dt_next; /* by a landing: the suggestion for after it stays */
     double suggestion = a->dt * f;
     if (energy_must_fall(m, a))
@@ -323,9 +356,12 @@ static void accepted(mt_model *m, const mt_attempt *a) {
             fmax(m->state.energy_rise, (m->energy_now - m->state.energy) / (fabs(m->state.energy) + 1e-300));
     mt_step_accept(m);
     m->ratio_old = a->ratio;
-    m->dt_next = cut_short && f >= 1 ? fmin(m->dt_next, GROWTH_MOST * a->dt) : suggestion;
-    m->dt_old = a->dt;
-    m->history = MT_HISTORY_STEP;
+    m->dt_next = cut_short && f >= 1 ? fmin(m->dt_next, (a->order > 2 ? GROWTH_THIRD : GROWTH_MOST) * a->dt)
+                                     : suggestion;
+    m->past_dt[1] = m->past_dt[0];
+    m->past_dt[0] = a->dt;
+    m->levels = m->levels < m->depth ? m->levels + 1 : m->depth;
+    m->stored = false;
     m->state.time = a->time_next;
     m->state.step = a->dt;
     m->state.error = a->ratio;
@@ -368,9 +404,9 @@ static bool values_changed(const mt_model *m) {
 /* At a kink of a param the history no longer describes the future; at a jump the stage-0 outputs are old too.
  */
 static mt_status pass_knot(mt_model *m, mt_error *err) {
-    if (!knot_at(m, m->state.time) || m->history == MT_HISTORY_NONE) return MT_OK;
-    m->history = MT_HISTORY_NONE;
-    if (multistep(m)) m->dt_next *= sqrt(m->options.accuracy);
+    if (!knot_at(m, m->state.time) || m->levels == 0) return MT_OK;
+    if (multistep(m)) m->dt_next *= shorter(m, m->levels + 1, 1);
+    m->levels = 0;
     m->ratio_old = 0;
     if (!jump_at(m, m->state.time)) return MT_OK;
     mt_status st = mt_step_refresh(m, false, err);
@@ -389,6 +425,8 @@ mt_status mt_model_advance(mt_model *m, double until, mt_tick tick, void *ctx, m
         if (st) return mt_context(err, st, "values set at time %.6g", m->state.time);
         m->state.energy = m->energy_now;
     }
+    if (m->stale) st = mt_step_refresh(m, false, err);
+    m->stale = false;
     m->state.finished = false;
     if (m->dt_next <= 0 && until > m->state.time) m->dt_next = first_step(m, until);
     while (m->state.time < until && !st) {

@@ -465,9 +465,10 @@ void mt_model_forget(mt_model *m) {
         mt_mover *v = &m->mover[i];
         mt_sum_end(&v->sum), mt_sum_end(&v->noise_sum);
         for (int j = 0; j < v->dominates; j++) mt_symbol_unref(&v->dominate[j].scale);
-        mt_free(v->dominate), mt_free(v->u), mt_free(v->um), mt_free(v->r);
+        mt_free(v->dominate), mt_free(v->u);
+        for (int j = 0; j < 2; j++) mt_free(v->past_u[j]), mt_free(v->past_r[j]);
         v->dominate = NULL, v->dominates = 0;
-        v->u = v->um = v->r = NULL;
+        v->u = v->past_u[0] = v->past_u[1] = v->past_r[0] = v->past_r[1] = NULL;
         v->node = v->potential = v->rhs = v->linear = v->implicit = NULL;
     }
     mt_factors_end(&m->linear_factors);
@@ -479,4 +480,5 @@ void mt_model_forget(mt_model *m) {
     m->quadratics = m->logs = m->params = 0;
     m->energy_rest = NULL;
     m->energy_known = m->derived = m->started = false;
+    m->depth = 0;
 }

@@ -13,7 +13,7 @@
  * dt/2 times the rate of the explicit part, and the error that remains about 2 q^2/3: a step passes where q
  * is below 0.7 sqrt(accuracy). With noise, steps are chosen by it from the past alone.
  *
- * Arrays as in step.c: um takes a and then u+, r takes F(u). */
+ * Arrays as in step.c: the oldest spectrum takes a and then u+, the oldest explicit part F(u). */
 #include "core/motion/column.h"
 
 #include <math.h>
@@ -107,8 +107,8 @@ static stage_lines lines_of(const exponential_ctx *x, const mt_column *c, const 
                          .weight = at->at[MT_LINE_WEIGHT],
                          .f = at->rhs + (size_t)i * at->line,
                          .u = v->u + c->offset,
-                         .um = v->um + c->offset,
-                         .r = v->r + c->offset};
+                         .um = mt_next_u(x->m, v) + c->offset,
+                         .r = mt_next_r(x->m, v) + c->offset};
 }
 
 static void update(const exponential_ctx *x, const mt_column *c, double *const in[], const mt_lines *at,
@@ -167,14 +167,14 @@ static mt_status sweep(mt_model *m, exponential_ctx *x, double time, mt_error *e
 static void show_spectra(mt_model *m, bool stage) {
     for (int i = 0; i < m->n; i++) {
         mt_mover *v = &m->mover[i];
-        m->program.u[i] = stage && v->motion != MT_MOTION_STILL ? v->um : v->u;
+        m->program.u[i] = stage && v->motion != MT_MOTION_STILL ? mt_next_u(m, v) : v->u;
     }
 }
 
 mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err) {
-    exponential_ctx x = {.m = m, .dt = a->dt, .fresh = m->history != MT_HISTORY_STORED};
+    exponential_ctx x = {.m = m, .dt = a->dt, .fresh = !m->stored};
     mt_status st = MT_OK;
-    a->swept = false;
+    a->swept = false, a->order = 1;
     mt_step_dominate(m, 0.5);
     mt_step_params(m, a->time, false);
     if (x.fresh) {
@@ -182,7 +182,7 @@ mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err) {
         m->state.evaluations++;
     }
     for (int i = 0; i < m->n; i++)
-        m->next[i] = m->mover[i].motion == MT_MOTION_STILL ? m->mover[i].u : m->mover[i].um;
+        m->next[i] = m->mover[i].motion == MT_MOTION_STILL ? m->mover[i].u : mt_next_u(m, &m->mover[i]);
     if (!st) st = sweep(m, &x, a->time, err);
     mt_step_params(m, a->time_next, a->lands_before_jump);
     x.second = true;
@@ -195,7 +195,7 @@ mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err) {
     if (st) return st;
     a->ratio =
         mt_step_error_ratio(m, 0.7 * sqrt(m->options.accuracy)); /* see the top: the error is its square */
-    if (m->options.fixed <= 0 && !m->noisy && a->ratio > 1) return MT_OK;
+    if (m->options.fixed <= 0 && !m->noisy && a->ratio > MT_TOLERATED) return MT_OK;
     a->swept = true;
     m->program.step = (uint32_t)(m->state.steps + 2); /* noise of the step that begins there */
     return mt_step_rows(m, a->time_next, a->capture, err);

@@ -12,6 +12,9 @@
 typedef struct mt_model mt_model;
 
 typedef enum mt_stepper {
+    MT_STEPPER_SBDF3, /* variable-step third-order semi-implicit backward differentiation (Ascher, Ruuth &
+                         Wetton, SIAM J. Numer. Anal. 32 (1995) 797), with the same stabilisation: two spectra
+                         more a field than SBDF2 */
     MT_STEPPER_SBDF2, /* variable-step second-order semi-implicit backward differentiation (Wang & Ruuth, J.
                          Comput. Math. 26 (2008) 838) with linear stabilisation */
     MT_STEPPER_EULER, /* first-order semi-implicit Euler with the same stabilisation */
@@ -33,6 +36,7 @@ typedef struct mt_step_options {
 } mt_step_options;
 
 #define MT_ACCURACY 1e-2
+#define MT_STEPPER_DEFAULT MT_STEPPER_SBDF3
 
 /* What the run knows about itself; all are sums or extremes since mt_model_start. */
 typedef struct mt_run_state {
@@ -158,8 +162,8 @@ MT_API mt_status mt_model_fluctuations(mt_model *m, const mt_field *field, const
 MT_API mt_status mt_model_start(mt_model *m, const mt_step_options *options, double time,
                                 mt_error *err) MT_MUST_USE;
 
-/* Other options from the present state on, which stays as it is (NULL: the defaults). */
-MT_API void mt_model_options(mt_model *m, const mt_step_options *options);
+/* Other options from the present state on, which stays as it is (NULL: the defaults). ENOMEM. */
+MT_API mt_status mt_model_options(mt_model *m, const mt_step_options *options, mt_error *err) MT_MUST_USE;
 
 /* Advances to exactly `until`, landing on every knot of a param's history on the way. On return (also on
  * ESTOPPED) the fields' values hold the state at mt_model_state()->time. tick may be NULL. Any failure leaves

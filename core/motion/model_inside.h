@@ -60,7 +60,9 @@ typedef struct mt_mover {
     int mobility_reduction; /* min of the mobility or rate; -1 if it is uniform */
     int finite_reduction;   /* min of the field, to see NaN; -1 if the energy shows it */
     /* running */
-    double *u, *um, *r; /* spectra: present, before (then: next), explicit part of the step before */
+    /* Spectra: present, one and two steps back, and the explicit parts R of these two. An attempt writes u+
+     * and R(u) over the oldest of each (mt_next_u, mt_next_r). */
+    double *u, *past_u[2], *past_r[2];
     unsigned version;
     double mean_start;
 } mt_mover;
@@ -71,12 +73,6 @@ typedef struct mt_quadratic {
     const mt_expr *q;
     int factor;
 } mt_quadratic;
-
-typedef enum mt_history {
-    MT_HISTORY_NONE,  /* stage-0 outputs belong to u: a one-step method from fresh right-hand sides */
-    MT_HISTORY_STEP,  /* um and r hold the step before: two-step method */
-    MT_HISTORY_STORED /* a step was rejected: one-step method from u and r, nothing is evaluated anew */
-} mt_history;
 
 struct mt_model {
     mt_forms *forms;
@@ -106,9 +102,13 @@ struct mt_model {
     bool started;
     mt_step_options options;
     mt_run_state state;
-    mt_history history;
-    double dt_old;  /* step before */
-    double dt_next; /* suggested */
+    int depth;  /* steps back that are kept: 1, or 2 for SBDF3 */
+    int levels; /* of them that are usable */
+    bool
+        stored; /* a step was rejected: R of the present state is in mt_next_r, the rows' outputs are spent */
+    bool stale; /* the rows' outputs do not belong to the present state */
+    double past_dt[2]; /* the last step and the one before */
+    double dt_next;    /* suggested */
     double ratio_old;
     bool after_jump;      /* stage-0 outputs are older than a jump of the params: evaluate anew */
     double *column_tally; /* [columns * (3 n + 1)]: error, change, norm per mover; quadratic energy */
@@ -116,6 +116,16 @@ struct mt_model {
     double **next;        /* [n]: spectra that an attempt writes */
     double energy_now;    /* of the state last swept */
 };
+
+/* times the error aimed at with which a step passes (step.c) */
+#define MT_TOLERATED 4.0
+
+static inline double *mt_next_u(const mt_model *m, const mt_mover *v) {
+    return v->past_u[m->depth - 1];
+}
+static inline double *mt_next_r(const mt_model *m, const mt_mover *v) {
+    return v->past_r[m->depth - 1];
+}
 
 /* equations.c */
 mt_status mt_model_derive(mt_model *m,
@@ -128,13 +138,14 @@ mt_status mt_model_check_posed(mt_model *m, mt_error *err);
 /* matrix.c: what state says of mobility and rate matrices, at the fields' present values */
 mt_status mt_model_check_matrices(mt_model *m, mt_error *err);
 
-/* step.c: one attempt from state.time to time_next. Leaves u+ in um (swapped in by mt_step_accept). */
+/* step.c: one attempt from state.time to time_next. Leaves u+ where mt_step_accept takes it from. */
 typedef struct mt_attempt {
     double time, dt, time_next;
     bool lands_before_jump; /* params at time_next take their value before a jump there */
     bool capture;           /* field values are wanted at time_next */
     /* results */
     double ratio; /* error / allowed */
+    int order;    /* the ratio goes with this power of the step */
     bool swept;   /* stage 0 was evaluated at u+ */
 } mt_attempt;
 mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err);

@@ -1,17 +1,23 @@
 /* One step: the column sweep that updates the spectra, the row sweep that evaluates the new state.
  *
- * The two-step method is SBDF2 with variable steps (Wang & Ruuth, J. Comput. Math. 26 (2008) 838, eq. for
- * general IMEX BDF2), w = dt / dt_old: [ (1+2w)/(1+w) u+ - (1+w) u + w^2/(1+w) u- ] / dt = Lambda u+ + (1+w)
- * E - w E-,     E = R + (L - Lambda) u, R the explicit part of the right-hand side without its own linear
- * terms. Lambda <= 0 is implicit; L - Lambda is the stabilisation, extrapolated, which costs accuracy of the
- * second order only. Started and restarted by the one-step method (u+ - u) / dt = Lambda u+ + E.
+ * Semi-implicit backward differentiation of order 1 to 3 with variable steps (SBDF: Ascher, Ruuth & Wetton,
+ * SIAM J. Numer. Anal. 32 (1995) 797; variable steps: Wang & Ruuth, J. Comput. Math. 26 (2008) 838):
+ *   [ a0 u+ + a1 u + a2 u- + a3 u-- ] / dt = Lambda u+ + b0 E + b1 E- + b2 E--,     E = R + (L - Lambda) u,
+ * a the derivative at the new time of the polynomial through the u's, b the extrapolation to it, R the
+ * explicit part of the right-hand side without its own linear terms. Lambda <= 0 is implicit; L - Lambda is
+ * the stabilisation, extrapolated, so it costs accuracy of the method's order only. For waves that are stiff
+ * beyond all bounds the root that leaves the unit circle first is -1: a rate lambda is stable for
+ * Lambda >= S/(1 + S) lambda, S = b0 - b1 + b2: 1/2, (1+2w)/(2+2w), 7/8 at equal steps. Started with the
+ * one-step method; each accepted step adds one to the order.
  *
- * Error estimate: u+ minus the explicit second-order predictor u + dt [ (1+w/2) (R + L u) - w/2 (R- + L u-)
- * ], divided by (1 - dt Lambda) so that stiff modes, which the predictor cannot follow, do not count. L in
- * the predictor is taken in the middle of the step, so that a ramp does not look like an error.
+ * Error estimate: u+ minus the explicit Adams-Bashforth predictor of the same order, divided by (1 - dt
+ * Lambda)^2: stiff waves, which the predictor cannot follow, are slaved to the others, and what they lag
+ * behind does not add up from step to step. L in the predictor is taken in the middle of the step, so that a
+ * ramp does not look like an error. A step passes with up to MT_TOLERATED times the error that is aimed at:
+ * rejections cost history, and one large error among smaller ones does not matter.
  *
- * Arrays per field: u, um (u-, overwritten by u+), r (R-, overwritten by R). A rejected step finds u and R
- * intact. */
+ * Arrays per field: u, and u-, u-- and R-, R-- as far back as the method goes; the oldest are written over.
+ */
 #include "core/motion/column.h"
 
 #include <math.h>
@@ -31,23 +37,41 @@
 #define ROUNDING 1e-14
 
 typedef struct scheme {
-    double dt, a0, a1, a2; /* a0 u+ + a1 u + a2 u- */
-    double b0, b1;         /* weights of E, E- */
-    double h0, h1;         /* weights in the predictor */
-    double theta;          /* dominance needed for stability: (1+2w)/(2+2w); 1/2 for the one-step method */
+    double dt, a[4]; /* a[0] u+ + a[1] u + a[2] u- + a[3] u-- */
+    double b[3];     /* weights of E, E-, E-- */
+    double h[3];     /* weights in the predictor */
+    double theta;    /* dominance needed for stability */
+    int order;
 } scheme;
 
-static scheme two_step(double dt, double w) {
-    return (scheme){dt,     (1 + 2 * w) / (1 + w),    -(1 + w), w * w / (1 + w), 1 + w, -w, 1 + w / 2,
-                    -w / 2, (1 + 2 * w) / (2 + 2 * w)};
+/* Nodes in units of dt, the new time at 0: -1, -1 - 1/w ...; l_j the Lagrange polynomials through them. */
+static double product(const double *x, int first, int n, int skip, double at) {
+    double p = 1;
+    for (int m = first; m <= n; m++)
+        if (m != skip) p *= at - x[m];
+    return p;
 }
 
-static scheme one_step(double dt) {
-    return (scheme){dt, 1, -1, 0, 1, 0, 1, 0, 0.5};
+/* Integral over [-1, 0] of a polynomial of degree <= 3, by Simpson's rule, which is exact for it. */
+static double predictor_weight(const double *x, int n, int j) {
+    double at[3] = {-1, -0.5, 0}, f[3];
+    for (int i = 0; i < 3; i++) f[i] = product(x, 1, n, j, at[i]) / product(x, 1, n, j, x[j]);
+    return (f[0] + 4 * f[1] + f[2]) / 6;
 }
 
-static scheme euler_with_history(double dt, double w) {
-    return (scheme){dt, 1, -1, 0, 1, 0, 1 + w / 2, -w / 2, 0.5};
+/* implicit: levels of the differentiation formula; predicted: of the predictor (more for Euler's method). */
+static scheme make_scheme(const mt_model *m, double dt, int implicit, int predicted) {
+    double x[4] = {0, -1, -1 - m->past_dt[0] / dt, -1 - (m->past_dt[0] + m->past_dt[1]) / dt}, spread = 0;
+    scheme s = {.dt = dt, .order = predicted};
+    for (int j = 1; j <= implicit; j++) {
+        s.a[0] -= 1 / x[j];
+        s.a[j] = product(x, 1, implicit, j, 0) / (x[j] * product(x, 1, implicit, j, x[j]));
+        s.b[j - 1] = product(x, 1, implicit, j, 0) / product(x, 1, implicit, j, x[j]);
+        spread += fabs(s.b[j - 1]);
+    }
+    for (int j = 1; j <= predicted; j++) s.h[j - 1] = predictor_weight(x, predicted, j);
+    s.theta = spread / (1 + spread);
+    return s;
 }
 
 /* --- the update along one column
@@ -55,30 +79,33 @@ static scheme euler_with_history(double dt, double w) {
 
 typedef struct lines {
     const double *l, *lambda, *middle,
-        *cross;                 /* per double of the column; cross: the partner's spectrum times it */
-    const double *rn, *uo, *ro; /* R; u- and R- (of the present state where the method uses none: never what a
-                                   rejected step left) */
-    double *u, *um, *r;
+        *cross; /* per double of the column; cross: the partner's spectrum times it */
+    const double *rn, *u1, *r1, *u2, *r2; /* R; u-, R-, u--, R-- (of the present state where the method uses
+                                             none: never what a rejected step left) */
+    double *u, *to, *r;                   /* u; u+ and R are written there */
 } lines;
 
 typedef struct sums {
     double error, change, norm;
 } sums;
 
-/* a1 u + a2 u- and the explicit parts: what stands on the right of a0 u+ - dt Lambda u+. */
+/* The past and the explicit parts: what stands on the right of a0 u+ - dt Lambda u+. */
 static inline __attribute__((always_inline)) double right_side(const scheme *s, const lines *x, size_t i) {
-    double l = x->l[i], im = x->lambda[i], un = x->u[i], uo = x->uo[i];
-    double explicit_now = x->rn[i] + (l - im) * un, explicit_old = x->ro[i] + (l - im) * uo;
-    return -s->a1 * un - s->a2 * uo + s->dt * (s->b0 * explicit_now + s->b1 * explicit_old);
+    double d = x->l[i] - x->lambda[i], un = x->u[i], u1 = x->u1[i], u2 = x->u2[i];
+    double past = s->a[1] * un + s->a[2] * u1 + s->a[3] * u2;
+    double known =
+        s->b[0] * (x->rn[i] + d * un) + s->b[1] * (x->r1[i] + d * u1) + s->b[2] * (x->r2[i] + d * u2);
+    return s->dt * known - past;
 }
 
 static inline __attribute__((always_inline)) void judge_one(const scheme *s, const lines *x, double weight,
                                                             double up, size_t i, double *e2, double *d2,
                                                             double *n2) {
-    double un = x->u[i], rn = x->rn[i];
-    double slope = s->h0 * rn + s->h1 * x->ro[i] + x->middle[i] * (s->h0 * un + s->h1 * x->uo[i]);
-    double e = (up - un - s->dt * slope) / (1 - s->dt * x->lambda[i]), d = up - un;
-    x->um[i] = up;
+    double un = x->u[i], rn = x->rn[i], q = 1 / (1 - s->dt * x->lambda[i]);
+    double slope = s->h[0] * rn + s->h[1] * x->r1[i] + s->h[2] * x->r2[i] +
+                   x->middle[i] * (s->h[0] * un + s->h[1] * x->u1[i] + s->h[2] * x->u2[i]);
+    double e = (up - un - s->dt * slope) * q * q, d = up - un;
+    x->to[i] = up;
     x->r[i] = rn;
     *e2 += weight * e * e;
     *d2 += weight * d * d;
@@ -87,7 +114,7 @@ static inline __attribute__((always_inline)) void judge_one(const scheme *s, con
 
 static inline __attribute__((always_inline)) void update_one(const scheme *s, const lines *x, const double *w,
                                                              size_t i, double *e2, double *d2, double *n2) {
-    double up = right_side(s, x, i) / (s->a0 - s->dt * x->lambda[i]);
+    double up = right_side(s, x, i) / (s->a[0] - s->dt * x->lambda[i]);
     judge_one(s, x, w[i], up, i, e2, d2, n2);
 }
 
@@ -109,9 +136,10 @@ static inline __attribute__((always_inline)) void update_two(const scheme *s, co
                                                              const double *w, size_t i, double e[2],
                                                              double d[2], double n[2]) {
     double cx = s->dt * x->cross[i], cy = s->dt * y->cross[i];
-    double past_x = s->b0 * x->u[i] + s->b1 * x->uo[i], past_y = s->b0 * y->u[i] + s->b1 * y->uo[i];
+    double past_x = s->b[0] * x->u[i] + s->b[1] * x->u1[i] + s->b[2] * x->u2[i],
+           past_y = s->b[0] * y->u[i] + s->b[1] * y->u1[i] + s->b[2] * y->u2[i];
     double p = right_side(s, x, i) - cx * past_y, q = right_side(s, y, i) - cy * past_x;
-    double ax = s->a0 - s->dt * x->lambda[i], ay = s->a0 - s->dt * y->lambda[i], det = ax * ay - cx * cy;
+    double ax = s->a[0] - s->dt * x->lambda[i], ay = s->a[0] - s->dt * y->lambda[i], det = ax * ay - cx * cy;
     double up = (ay * p + cx * q) / det, uq = (ax * q + cy * p) / det;
     judge_one(s, x, w[i], up, i, &e[0], &d[0], &n[0]);
     judge_one(s, y, w[i], uq, i, &e[1], &d[1], &n[1]);
@@ -136,8 +164,8 @@ MT_VECTOR_CLONES static void pair_line(const scheme *s, const lines *x, const li
 typedef struct column_ctx {
     mt_model *m;
     scheme s;
-    bool history;        /* um and r hold the step before */
-    bool fresh;          /* right-hand sides come from the sweep; else from r */
+    int levels;          /* of the past that the scheme uses */
+    bool fresh;          /* right-hand sides come from the sweep; else they are stored */
     bool moving;         /* params change during the step: L in its middle differs */
     bool update;         /* false: only the quadratic energy and quantities of the present state */
     double *const *next; /* spectra that quantities are formed from */
@@ -145,7 +173,8 @@ typedef struct column_ctx {
 
 static lines from(lines x, size_t skip) {
     x.l += skip, x.lambda += skip, x.middle += skip, x.cross += skip;
-    x.rn += skip, x.uo += skip, x.ro += skip, x.u += skip, x.um += skip, x.r += skip;
+    x.rn += skip, x.u1 += skip, x.r1 += skip, x.u2 += skip, x.r2 += skip;
+    x.u += skip, x.to += skip, x.r += skip;
     return x;
 }
 
@@ -161,7 +190,7 @@ typedef struct kept {
  * for it is taken back. */
 static sums hold_mean(const mt_mover *v, const lines *x, kept k, sums mean) {
     if (!v->mean_held) return mean; /* its mean moves, and errs, too */
-    x->um[0] = k.u, x->r[0] = k.r;
+    x->to[0] = k.u, x->r[0] = k.r;
     return (sums){0, 0, 0};
 }
 
@@ -200,9 +229,12 @@ static lines lines_of(const column_ctx *x, const mt_column *c, const mt_lines *a
     double *l = at->at[MT_LINE_L + shift], *lambda = at->at[MT_LINE_LAMBDA + shift],
            *middle = at->at[MT_LINE_MIDDLE + shift], *cross = at->at[MT_LINE_CROSS + shift];
     lines ln = {.l = l, .lambda = lambda, .middle = l, .cross = cross};
-    ln.u = v->u + c->offset, ln.um = v->um + c->offset, ln.r = v->r + c->offset;
+    ln.u = v->u + c->offset, ln.to = mt_next_u(x->m, v) + c->offset, ln.r = mt_next_r(x->m, v) + c->offset;
     ln.rn = x->fresh ? at->rhs + (size_t)i * at->line : ln.r;
-    ln.uo = x->history ? ln.um : ln.u, ln.ro = x->history ? ln.r : ln.rn;
+    ln.u1 = x->levels > 0 ? v->past_u[0] + c->offset : ln.u;
+    ln.r1 = x->levels > 0 ? v->past_r[0] + c->offset : ln.rn;
+    ln.u2 = x->levels > 1 ? v->past_u[1] + c->offset : ln.u;
+    ln.r2 = x->levels > 1 ? v->past_r[1] + c->offset : ln.rn;
     mt_column_spread(p, at->factors, v->linear_factor, c, l);
     mt_column_spread(p, at->factors, v->implicit_factor, c, lambda);
     if (v->partner >= 0) mt_column_spread(p, at->factors, v->cross_factor, c, cross);
@@ -332,21 +364,18 @@ double mt_step_error_ratio(const mt_model *m, double accuracy) {
 }
 
 static scheme choose_scheme(const mt_model *m, double dt) {
-    if (m->history != MT_HISTORY_STEP) return one_step(dt);
-    double w = dt / m->dt_old;
-    return m->options.stepper == MT_STEPPER_EULER ? euler_with_history(dt, w) : two_step(dt, w);
+    bool euler = m->options.stepper == MT_STEPPER_EULER;
+    return make_scheme(m, dt, euler ? 1 : m->levels + 1, m->levels + 1);
 }
 
 /* Lambda has to dominate over the whole step: the extremes of a are those of the present state. */
 mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err) {
     mt_status st = MT_OK;
     if (m->noisy || m->options.stepper == MT_STEPPER_ETDRK2) return mt_step_exponential(m, a, err);
-    column_ctx x = {.m = m,
-                    .fresh = m->history != MT_HISTORY_STORED,
-                    .update = true,
-                    .history = m->history == MT_HISTORY_STEP};
+    column_ctx x = {.m = m, .fresh = !m->stored, .update = true, .levels = m->levels};
     a->swept = false;
     x.s = choose_scheme(m, a->dt);
+    a->order = x.s.order;
     mt_step_dominate(m, x.s.theta);
     mt_step_params(m, a->time, false);
     if (x.fresh) {
@@ -361,12 +390,12 @@ mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err) {
     mt_step_params(m, a->time_next, a->lands_before_jump);
     x.next = m->next;
     for (int i = 0; i < m->n; i++)
-        m->next[i] = m->mover[i].motion == MT_MOTION_STILL ? m->mover[i].u : m->mover[i].um;
+        m->next[i] = m->mover[i].motion == MT_MOTION_STILL ? m->mover[i].u : mt_next_u(m, &m->mover[i]);
     if (!st) st = mt_step_columns(m, x.fresh, column_body, &x, a->time_next, err);
     if (st) return st;
     for (int i = 0; i < m->n; i++) mt_spectrum_symmetrise(m->program.spectrum, m->next[i]);
     a->ratio = mt_step_error_ratio(m, m->options.accuracy);
-    if (m->options.fixed <= 0 && a->ratio > 1) return MT_OK;
+    if (m->options.fixed <= 0 && a->ratio > MT_TOLERATED) return MT_OK;
     a->swept = true;
     return mt_step_rows(m, a->time_next, a->capture, err);
 }
@@ -375,9 +404,11 @@ void mt_step_accept(mt_model *m) {
     for (int i = 0; i < m->n; i++) {
         mt_mover *v = &m->mover[i];
         if (v->motion == MT_MOTION_STILL) continue;
-        double *t = v->u;
-        v->u = v->um;
-        v->um = t;
+        double *u = mt_next_u(m, v), *r = mt_next_r(m, v);
+        for (int j = m->depth - 1; j > 0; j--)
+            v->past_u[j] = v->past_u[j - 1], v->past_r[j] = v->past_r[j - 1];
+        v->past_u[0] = v->u, v->past_r[0] = r;
+        v->u = u;
         m->program.u[i] = v->u;
     }
 }
