@@ -7,8 +7,12 @@
 
 #include "core/base/memory.h"
 
-#define GROWTH_MOST 2.0  /* variable-step BDF2 is zero-stable below 1 + sqrt 2 (Grigorieff 1983) */
-#define GROWTH_THIRD 1.4 /* the third-order formula below 1.534 (Calvo, Grande & Grigorieff 1990; from memory) */
+#define GROWTH_MOST 2.0 /* variable-step BDF2 is zero-stable below 1 + sqrt 2 (Grigorieff 1983) */
+#define GROWTH_THIRD                                                                                         \
+    1.4 /* the third-order formula below 1.534 (Calvo, Grande & Grigorieff 1990; from memory) */
+#define STEADY_LEAST 0.87 /* smaller changes of the step are not made: each upsets the method's memory */
+#define STEADY_MOST 1.25
+#define LANDING 20 /* steps ahead in which a time to land on is seen */
 #define REJECTIONS_MOST 60
 #define ENERGY_ROUNDING 1e-11 /* rise of the energy, relative to its size, that is laid to rounding */
 #define LOG_FAR -0.02         /* an argument of a logarithm this far out of its domain rejects the step */
@@ -19,7 +23,7 @@
 
 static mt_status allocate(mt_model *m, mt_error *err) {
     mt_program *p = &m->program;
-    size_t doubles = p->spectrum->doubles, width = 3 * (size_t)m->n + 1;
+    size_t doubles = p->spectrum->doubles, width = MT_TALLY * (size_t)m->n + 1;
     p->split.build.err = err;
     mt_status st = mt_program_allocate(p, m->column_doubles);
     p->split.build.err = NULL;
@@ -62,7 +66,7 @@ static mt_status remember(mt_model *m, mt_stepper stepper, mt_error *err) {
 mt_status mt_model_bytes(mt_model *m, size_t *bytes, mt_error *err) {
     mt_status st = mt_model_derive(m, err);
     if (st) return st;
-    size_t one = m->program.spectrum->doubles * sizeof(double), width = 3 * (size_t)m->n + 1;
+    size_t one = m->program.spectrum->doubles * sizeof(double), width = MT_TALLY * (size_t)m->n + 1;
     *bytes = mt_program_bytes(&m->program, m->column_doubles);
     size_t past = 1 + 2 * (size_t)(m->depth ? m->depth : depth_of(MT_STEPPER_DEFAULT));
     for (int i = 0; i < m->n; i++) {
@@ -83,6 +87,7 @@ static mt_status take_values(mt_model *m, mt_error *err) {
         v->mean_start = v->u[0];
     }
     m->levels = 0, m->stored = m->stale = false;
+    m->most_levels = 2, m->limit_at = 0;
     m->dt_next = 0;
     return st ? st : mt_step_refresh(m, true, err);
 }
@@ -279,15 +284,17 @@ static double first_step(mt_model *m, double until) {
     return fmin(dt, until - m->state.time);
 }
 
-/* Lands exactly; the last two steps before a landing are halves rather than one long and one tiny. */
+/* Lands exactly. The way there is divided into equal steps in good time: a short step among long ones would
+ * upset the method's memory, and the estimate after it, for many steps. */
 static void plan_step(mt_model *m, double stop, mt_attempt *a) {
     double left = stop - m->state.time, dt = m->options.fixed > 0 ? m->options.fixed : m->dt_next;
     if (m->options.longest > 0) dt = fmin(dt, m->options.longest);
     a->time = m->state.time;
-    if (dt >= left * (1 - 1e-9))
+    double steps = ceil(left / dt * (1 - 1e-9));
+    if (steps <= 1)
         dt = left;
-    else if (m->options.fixed <= 0 && dt > 0.5 * left)
-        dt = 0.5 * left;
+    else if (m->options.fixed <= 0 && steps < LANDING)
+        dt = left / steps;
     a->dt = dt;
     a->time_next = dt == left ? stop : a->time + dt;
     a->lands_before_jump = dt == left;
@@ -305,7 +312,28 @@ static double growth(const mt_model *m, const mt_attempt *a) {
     double most = a->order > 2 ? GROWTH_THIRD : GROWTH_MOST;
     if (ratio <= 1e-12) return most;
     double f = 0.9 * pow(ratio, -0.8 / order) * pow(fmax(old, 1e-12), 0.3 / order);
+    if (f > STEADY_LEAST && f < STEADY_MOST) f = 1;
     return fmin(most, fmax(0.3, f));
+}
+
+#define LOOK_AGAIN 32 /* steps after which the limit is looked up anew */
+
+/* Third order up to its limit of stability; second order where that would take longer steps than the limit.
+ */
+static void choose_order(mt_model *m, const mt_attempt *a) {
+    if (m->depth < 2 || !multistep(m)) return;
+    if (m->limit_at == 0 || m->state.steps >= m->limit_at + LOOK_AGAIN) {
+        m->third_limit = mt_step_third_order_limit(m, m->state.time);
+        m->limit_at = m->state.steps + 1;
+    }
+    if (a->order == 3) {
+        double second = a->dt * 0.9 / sqrt(fmax(a->lower, 1e-12));
+        if (m->dt_next > m->third_limit && second > m->third_limit)
+            m->most_levels = 1, m->dt_next = fmin(second, GROWTH_MOST * a->dt);
+        else
+            m->dt_next = fmin(m->dt_next, m->third_limit);
+    } else if (m->most_levels == 1 && m->dt_next < 0.7 * m->third_limit)
+        m->most_levels = 2;
 }
 
 /* A method of order p makes the error e with a step in proportion to e^(1/p): how much shorter it is for
@@ -369,6 +397,7 @@ static void accepted(mt_model *m, const mt_attempt *a) {
     m->state.step_min = fmin(m->state.step_min, a->dt);
     m->state.step_max = fmax(m->state.step_max, a->dt);
     note_state(m);
+    if (m->options.fixed <= 0) choose_order(m, a);
 }
 
 /* One accepted step towards stop. */

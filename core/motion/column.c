@@ -87,16 +87,16 @@ void mt_column_finish(const mt_model *m, const mt_column *c, double *const in[],
         energy += quadratic_line(x->at[MT_LINE_SPARE], x->at[MT_LINE_WEIGHT], next[q->mover] + c->offset,
                                  x->doubles);
     }
-    tally[3 * m->n] = energy;
+    tally[MT_TALLY * m->n] = energy;
     mt_program_quantities(p, 0, -1, c, in, next, x->factors, out);
 }
 
 double *mt_column_tally(const mt_model *m, const mt_column *c) {
-    return m->column_tally + c->index * (3 * (size_t)m->n + 1);
+    return m->column_tally + c->index * (MT_TALLY * (size_t)m->n + 1);
 }
 
 void mt_column_merge(mt_model *m) {
-    size_t width = 3 * (size_t)m->n + 1;
+    size_t width = MT_TALLY * (size_t)m->n + 1;
     memset(m->totals, 0, width * sizeof(double));
     for (size_t c = 0; c < m->program.spectrum->columns; c++)
         for (size_t i = 0; i < width; i++) m->totals[i] += m->column_tally[c * width + i];

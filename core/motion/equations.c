@@ -189,13 +189,16 @@ static void derive_implicit(mt_model *m, mt_mover *v) {
     mt_stiffness stiff;
     if (mt_stiff_find(b, v->rhs, v->node, m->grid->dim, &stiff) != MT_OK) return;
     const mt_expr *zero = mt_build_number(b, 0), *sum = zero;
+    v->stabilising = NULL;
     for (int i = 0; i < stiff.n && status(m) == MT_OK; i++) {
         mt_stiff *s = &stiff.item[i];
         if (mt_expr_uniform(s->a))
             sum = mt_build_sub(b, sum, mt_build_mul(b, s->a, s->o));
         else if (s->even && add_dominate(m, v, s)) {
             const mt_dominate *d = &v->dominate[v->dominates - 1];
-            sum = mt_build_sub(b, sum, mt_build_mul(b, mt_build_symbol(b, d->scale), d->o));
+            const mt_expr *extra = mt_build_mul(b, mt_build_symbol(b, d->scale), d->o);
+            sum = mt_build_sub(b, sum, extra);
+            v->stabilising = v->stabilising ? mt_build_add(b, v->stabilising, extra) : extra;
         }
     }
     mt_stiff_end(&stiff);
@@ -399,6 +402,7 @@ static mt_status make_program(mt_model *m) {
         v->linear_factor = wanted_factor(m, v->linear);
         v->implicit_factor = wanted_factor(m, v->implicit);
         v->cross_factor = wanted_factor(m, v->cross);
+        v->stabilising_factor = wanted_factor(m, v->stabilising);
         m->linear_factors.e[m->linear_factors.n++] = v->linear;
     }
     for (int i = 0; i < m->quadratics; i++) m->quadratic[i].factor = wanted_factor(m, m->quadratic[i].q);

@@ -140,7 +140,8 @@ static void update(const exponential_ctx *x, const mt_column *c, double *const i
             ln.um[0] = u0;
             if (mean == 2) ln.um[1] = ln.u[1];
         }
-        tally[3 * i] = t.error, tally[3 * i + 1] = t.change, tally[3 * i + 2] = fmax(0, t.norm);
+        double *to = tally + MT_TALLY * i;
+        to[0] = t.error, to[1] = t.change, to[2] = fmax(0, t.norm), to[3] = 0;
     }
 }
 
@@ -194,7 +195,7 @@ mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err) {
     show_spectra(m, false);
     if (st) return st;
     a->ratio =
-        mt_step_error_ratio(m, 0.7 * sqrt(m->options.accuracy)); /* see the top: the error is its square */
+        mt_step_error_ratio(m, 0.7 * sqrt(m->options.accuracy), 0); /* see the top: the error is its square */
     if (m->options.fixed <= 0 && !m->noisy && a->ratio > MT_TOLERATED) return MT_OK;
     a->swept = true;
     m->program.step = (uint32_t)(m->state.steps + 2); /* noise of the step that begins there */

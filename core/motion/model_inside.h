@@ -46,8 +46,10 @@ typedef struct mt_mover {
     /* derived (kept by the program's builder) */
     const mt_expr *node, *potential, *rhs;
     mt_sum sum;
-    const mt_expr *linear;              /* L(k): own linear terms */
-    const mt_expr *implicit;            /* Lambda(k) <= 0: the part taken implicitly */
+    const mt_expr *linear;      /* L(k): own linear terms */
+    const mt_expr *implicit;    /* Lambda(k) <= 0: the part taken implicitly */
+    const mt_expr *stabilising; /* what varying coefficients add to -Lambda, or NULL */
+    int stabilising_factor;
     int linear_factor, implicit_factor; /* in the last column sweep; -1: constant 1, -2: constant 0 */
     int partner;                        /* mover solved in one block with this one, or -1 */
     const mt_expr *cross;               /* what the partner's spectrum is multiplied by, implicitly */
@@ -102,8 +104,11 @@ struct mt_model {
     bool started;
     mt_step_options options;
     mt_run_state state;
-    int depth;  /* steps back that are kept: 1, or 2 for SBDF3 */
-    int levels; /* of them that are usable */
+    int depth;          /* steps back that are kept: 1, or 2 for SBDF3 */
+    int levels;         /* of them that are usable */
+    int most_levels;    /* of them that are wanted: 1 where second order takes longer steps than third */
+    double third_limit; /* a step of third order may not be longer */
+    uint64_t limit_at;  /* number of the step at which that was looked up; 0: not yet */
     bool
         stored; /* a step was rejected: R of the present state is in mt_next_r, the rows' outputs are spent */
     bool stale; /* the rows' outputs do not belong to the present state */
@@ -116,6 +121,9 @@ struct mt_model {
     double **next;        /* [n]: spectra that an attempt writes */
     double energy_now;    /* of the state last swept */
 };
+
+/* sums over a column for each mover: error, change, norm, error of one order less (squares) */
+#define MT_TALLY 4
 
 /* times the error aimed at with which a step passes (step.c) */
 #define MT_TOLERATED 4.0
@@ -145,6 +153,7 @@ typedef struct mt_attempt {
     bool capture;           /* field values are wanted at time_next */
     /* results */
     double ratio; /* error / allowed */
+    double lower; /* the same for the method of one order less */
     int order;    /* the ratio goes with this power of the step */
     bool swept;   /* stage 0 was evaluated at u+ */
 } mt_attempt;
@@ -152,7 +161,8 @@ mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err);
 mt_status mt_step_exponential(mt_model *m, mt_attempt *a, mt_error *err); /* exponential.c */
 void mt_step_accept(mt_model *m);
 mt_status mt_step_refresh(mt_model *m, bool capture,
-                          mt_error *err);         /* stage 0 of the present u at state.time */
+                          mt_error *err); /* stage 0 of the present u at state.time */
+double mt_step_third_order_limit(mt_model *m, double time);
 double mt_step_fastest(mt_model *m, double time); /* max over modes and fields of |L|, |Lambda| */
 double mt_step_energy(const mt_model *m);         /* from the last stage-0 sweep and quadratic tallies */
 void mt_step_params(mt_model *m, double time, bool before_jump);
@@ -164,7 +174,7 @@ mt_status mt_step_columns(mt_model *m, bool fresh, mt_column_body body, void *ct
                           mt_error *err);
 mt_status mt_step_rows(mt_model *m, double time, bool capture, mt_error *err);
 mt_status mt_step_later_stages(mt_model *m, double time, mt_error *err);
-double mt_step_error_ratio(const mt_model *m, double accuracy);
+double mt_step_error_ratio(const mt_model *m, double accuracy, int part);
 void mt_step_dominate(mt_model *m, double theta);
 
 #endif

@@ -40,6 +40,7 @@ typedef struct scheme {
     double dt, a[4]; /* a[0] u+ + a[1] u + a[2] u- + a[3] u-- */
     double b[3];     /* weights of E, E-, E-- */
     double h[3];     /* weights in the predictor */
+    double g[3];     /* and in that of one order less */
     double theta;    /* dominance needed for stability */
     int order;
 } scheme;
@@ -70,6 +71,7 @@ static scheme make_scheme(const mt_model *m, double dt, int implicit, int predic
         spread += fabs(s.b[j - 1]);
     }
     for (int j = 1; j <= predicted; j++) s.h[j - 1] = predictor_weight(x, predicted, j);
+    for (int j = 1; j < predicted; j++) s.g[j - 1] = predictor_weight(x, predicted - 1, j);
     s.theta = spread / (1 + spread);
     return s;
 }
@@ -86,7 +88,7 @@ typedef struct lines {
 } lines;
 
 typedef struct sums {
-    double error, change, norm;
+    double error, lower, change, norm; /* lower: the error that a method of one order less would make */
 } sums;
 
 /* The past and the explicit parts: what stands on the right of a0 u+ - dt Lambda u+. */
@@ -99,61 +101,65 @@ static inline __attribute__((always_inline)) double right_side(const scheme *s, 
 }
 
 static inline __attribute__((always_inline)) void judge_one(const scheme *s, const lines *x, double weight,
-                                                            double up, size_t i, double *e2, double *d2,
-                                                            double *n2) {
+                                                            double up, size_t i, double *e2, double *l2,
+                                                            double *d2, double *n2) {
     double un = x->u[i], rn = x->rn[i], q = 1 / (1 - s->dt * x->lambda[i]);
     double slope = s->h[0] * rn + s->h[1] * x->r1[i] + s->h[2] * x->r2[i] +
                    x->middle[i] * (s->h[0] * un + s->h[1] * x->u1[i] + s->h[2] * x->u2[i]);
-    double e = (up - un - s->dt * slope) * q * q, d = up - un;
+    double miss = up - un - s->dt * slope, e = miss * q * sqrt(q), d = up - un;
+    double lower = s->g[0] * (rn + x->middle[i] * un) + s->g[1] * (x->r1[i] + x->middle[i] * x->u1[i]);
+    double f = (miss + s->dt * (slope - lower)) * q * sqrt(q);
     x->to[i] = up;
     x->r[i] = rn;
     *e2 += weight * e * e;
+    *l2 += weight * f * f;
     *d2 += weight * d * d;
     *n2 += weight * up * up;
 }
 
 static inline __attribute__((always_inline)) void update_one(const scheme *s, const lines *x, const double *w,
-                                                             size_t i, double *e2, double *d2, double *n2) {
+                                                             size_t i, double *e2, double *l2, double *d2,
+                                                             double *n2) {
     double up = right_side(s, x, i) / (s->a[0] - s->dt * x->lambda[i]);
-    judge_one(s, x, w[i], up, i, e2, d2, n2);
+    judge_one(s, x, w[i], up, i, e2, l2, d2, n2);
 }
 
 /* Sums in LANES interleaved parts, joined in fixed order: vector code, and the same bits whatever its width.
  */
 MT_VECTOR_CLONES static sums update_line(const scheme *s, const lines *x, const double *weight, size_t n) {
-    double e[LANES] = {0}, d[LANES] = {0}, q[LANES] = {0};
+    double e[LANES] = {0}, l[LANES] = {0}, d[LANES] = {0}, q[LANES] = {0};
     size_t i = 0;
     for (; i + LANES <= n; i += LANES)
-        for (size_t j = 0; j < LANES; j++) update_one(s, x, weight, i + j, &e[j], &d[j], &q[j]);
-    for (size_t j = 0; i < n; i++, j++) update_one(s, x, weight, i, &e[j], &d[j], &q[j]);
-    sums t = {0, 0, 0};
-    for (int j = 0; j < LANES; j++) t.error += e[j], t.change += d[j], t.norm += q[j];
+        for (size_t j = 0; j < LANES; j++) update_one(s, x, weight, i + j, &e[j], &l[j], &d[j], &q[j]);
+    for (size_t j = 0; i < n; i++, j++) update_one(s, x, weight, i, &e[j], &l[j], &d[j], &q[j]);
+    sums t = {0, 0, 0, 0};
+    for (int j = 0; j < LANES; j++) t.error += e[j], t.lower += l[j], t.change += d[j], t.norm += q[j];
     return t;
 }
 
 /* Two fields coupled by linear terms: a 2 x 2 block per mode. */
 static inline __attribute__((always_inline)) void update_two(const scheme *s, const lines *x, const lines *y,
                                                              const double *w, size_t i, double e[2],
-                                                             double d[2], double n[2]) {
+                                                             double l[2], double d[2], double n[2]) {
     double cx = s->dt * x->cross[i], cy = s->dt * y->cross[i];
     double past_x = s->b[0] * x->u[i] + s->b[1] * x->u1[i] + s->b[2] * x->u2[i],
            past_y = s->b[0] * y->u[i] + s->b[1] * y->u1[i] + s->b[2] * y->u2[i];
     double p = right_side(s, x, i) - cx * past_y, q = right_side(s, y, i) - cy * past_x;
     double ax = s->a[0] - s->dt * x->lambda[i], ay = s->a[0] - s->dt * y->lambda[i], det = ax * ay - cx * cy;
     double up = (ay * p + cx * q) / det, uq = (ax * q + cy * p) / det;
-    judge_one(s, x, w[i], up, i, &e[0], &d[0], &n[0]);
-    judge_one(s, y, w[i], uq, i, &e[1], &d[1], &n[1]);
+    judge_one(s, x, w[i], up, i, &e[0], &l[0], &d[0], &n[0]);
+    judge_one(s, y, w[i], uq, i, &e[1], &l[1], &d[1], &n[1]);
 }
 
 MT_VECTOR_CLONES static void pair_line(const scheme *s, const lines *x, const lines *y, const double *weight,
                                        size_t n, sums t[2]) {
-    double e[LANES][2] = {{0}}, d[LANES][2] = {{0}}, q[LANES][2] = {{0}};
+    double e[LANES][2] = {{0}}, l[LANES][2] = {{0}}, d[LANES][2] = {{0}}, q[LANES][2] = {{0}};
     size_t i = 0;
     for (; i + LANES <= n; i += LANES)
-        for (size_t j = 0; j < LANES; j++) update_two(s, x, y, weight, i + j, e[j], d[j], q[j]);
-    for (size_t j = 0; i < n; i++, j++) update_two(s, x, y, weight, i, e[j], d[j], q[j]);
+        for (size_t j = 0; j < LANES; j++) update_two(s, x, y, weight, i + j, e[j], l[j], d[j], q[j]);
+    for (size_t j = 0; i < n; i++, j++) update_two(s, x, y, weight, i, e[j], l[j], d[j], q[j]);
     for (int k = 0; k < 2; k++) {
-        t[k] = (sums){0, 0, 0};
+        t[k] = (sums){0, 0, 0, 0};
         for (int j = 0; j < LANES; j++) t[k].error += e[j][k], t[k].change += d[j][k], t[k].norm += q[j][k];
     }
 }
@@ -179,7 +185,7 @@ static lines from(lines x, size_t skip) {
 }
 
 static sums plus(sums a, sums b) {
-    return (sums){a.error + b.error, a.change + b.change, a.norm + b.norm};
+    return (sums){a.error + b.error, a.lower + b.lower, a.change + b.change, a.norm + b.norm};
 }
 
 typedef struct kept {
@@ -191,13 +197,13 @@ typedef struct kept {
 static sums hold_mean(const mt_mover *v, const lines *x, kept k, sums mean) {
     if (!v->mean_held) return mean; /* its mean moves, and errs, too */
     x->to[0] = k.u, x->r[0] = k.r;
-    return (sums){0, 0, 0};
+    return (sums){0, 0, 0, 0};
 }
 
 static void update_single(const column_ctx *x, const mt_mover *v, const lines *ln, const mt_lines *c,
                           size_t skip, sums *t) {
     const double *w = c->at[MT_LINE_WEIGHT];
-    sums mean = {0, 0, 0};
+    sums mean = {0, 0, 0, 0};
     if (skip) {
         kept k = {ln->u[0], ln->r[0]};
         mean = hold_mean(v, ln, k, update_line(&x->s, ln, w, skip));
@@ -209,7 +215,7 @@ static void update_single(const column_ctx *x, const mt_mover *v, const lines *l
 static void update_pair(const column_ctx *x, const mt_mover *v, const mt_mover *u, const lines ln[2],
                         const mt_lines *c, size_t skip, sums t[2]) {
     const double *w = c->at[MT_LINE_WEIGHT];
-    sums mean[2] = {{0, 0, 0}, {0, 0, 0}};
+    sums mean[2] = {{0, 0, 0, 0}, {0, 0, 0, 0}};
     if (skip) {
         kept k[2] = {{ln[0].u[0], ln[0].r[0]}, {ln[1].u[0], ln[1].r[0]}};
         pair_line(&x->s, &ln[0], &ln[1], w, skip, mean);
@@ -256,7 +262,7 @@ static void update_all(const column_ctx *x, const mt_column *c, double *const in
     if (x->fresh) mt_column_rhs(m, c, in, at);
     for (int i = 0; i < m->n; i++) {
         mt_mover *v = &m->mover[i];
-        sums t[2] = {{0, 0, 0}, {0, 0, 0}};
+        sums t[2] = {{0, 0, 0, 0}, {0, 0, 0, 0}};
         if (v->motion == MT_MOTION_STILL || (v->partner >= 0 && v->partner < i)) continue;
         lines ln[2] = {lines_of(x, c, at, i, 0)};
         if (v->partner < 0)
@@ -266,8 +272,8 @@ static void update_all(const column_ctx *x, const mt_column *c, double *const in
             update_pair(x, v, &m->mover[v->partner], ln, at, skip, t);
         }
         for (int k = 0; k < (v->partner < 0 ? 1 : 2); k++) {
-            double *to = tally + 3 * (k ? v->partner : i);
-            to[0] = t[k].error, to[1] = t[k].change, to[2] = t[k].norm;
+            double *to = tally + MT_TALLY * (k ? v->partner : i);
+            to[0] = t[k].error, to[1] = t[k].change, to[2] = t[k].norm, to[3] = t[k].lower;
         }
     }
 }
@@ -313,7 +319,7 @@ void mt_step_dominate(mt_model *m, double theta) {
  */
 
 double mt_step_energy(const mt_model *m) {
-    double e = m->totals[3 * m->n] * m->grid->volume;
+    double e = m->totals[MT_TALLY * m->n] * m->grid->volume;
     if (!m->energy_known) return NAN;
     if (m->energy_reduction >= 0) e += m->program.total[m->energy_reduction].value * m->grid->cell_volume;
     return e;
@@ -350,29 +356,35 @@ mt_status mt_step_later_stages(mt_model *m, double time, mt_error *err) {
     return st;
 }
 
-double mt_step_error_ratio(const mt_model *m, double accuracy) {
+/* part: 0, of the method; 3, of that of one order less */
+double mt_step_error_ratio(const mt_model *m, double accuracy, int part) {
     double worst = 0;
     for (int i = 0; i < m->n; i++) {
-        const double *t = m->totals + 3 * i;
+        const double *t = m->totals + MT_TALLY * i;
         if (m->mover[i].motion == MT_MOTION_STILL) continue;
         double allowed =
             accuracy * (sqrt(t[1]) + REST * sqrt(t[2])) + ROUNDING * fabs(m->mover[i].u[0]) + 1e-300;
-        double ratio = sqrt(t[0]) / allowed;
+        double ratio = sqrt(t[part]) / allowed;
         if (!(ratio <= worst)) worst = isnan(ratio) ? INFINITY : ratio;
     }
     return worst;
 }
 
+static int used_levels(const mt_model *m) {
+    return m->levels < m->most_levels ? m->levels : m->most_levels;
+}
+
 static scheme choose_scheme(const mt_model *m, double dt) {
     bool euler = m->options.stepper == MT_STEPPER_EULER;
-    return make_scheme(m, dt, euler ? 1 : m->levels + 1, m->levels + 1);
+    int levels = used_levels(m);
+    return make_scheme(m, dt, euler ? 1 : levels + 1, levels + 1);
 }
 
 /* Lambda has to dominate over the whole step: the extremes of a are those of the present state. */
 mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err) {
     mt_status st = MT_OK;
     if (m->noisy || m->options.stepper == MT_STEPPER_ETDRK2) return mt_step_exponential(m, a, err);
-    column_ctx x = {.m = m, .fresh = !m->stored, .update = true, .levels = m->levels};
+    column_ctx x = {.m = m, .fresh = !m->stored, .update = true, .levels = used_levels(m)};
     a->swept = false;
     x.s = choose_scheme(m, a->dt);
     a->order = x.s.order;
@@ -394,7 +406,8 @@ mt_status mt_step_attempt(mt_model *m, mt_attempt *a, mt_error *err) {
     if (!st) st = mt_step_columns(m, x.fresh, column_body, &x, a->time_next, err);
     if (st) return st;
     for (int i = 0; i < m->n; i++) mt_spectrum_symmetrise(m->program.spectrum, m->next[i]);
-    a->ratio = mt_step_error_ratio(m, m->options.accuracy);
+    a->ratio = mt_step_error_ratio(m, m->options.accuracy, 0);
+    a->lower = mt_step_error_ratio(m, m->options.accuracy, 3);
     if (m->options.fixed <= 0 && a->ratio > MT_TOLERATED) return MT_OK;
     a->swept = true;
     return mt_step_rows(m, a->time_next, a->capture, err);
@@ -419,6 +432,42 @@ mt_status mt_step_refresh(mt_model *m, bool capture, mt_error *err) {
     m->program.step = (uint32_t)(m->state.steps + 1);
     mt_status st = mt_step_columns(m, false, column_body, &x, m->state.time, err);
     return st ? st : mt_step_rows(m, m->state.time, capture, err);
+}
+
+/* --- how long a step of third order may be
+ * ---------------------------------------------------------------------------- */
+
+static mt_status stabilised_body(void *ctx, const mt_column *c, double *const in[], double *const out[],
+                                 int worker, mt_error *err) {
+    mt_model *m = ctx;
+    mt_program *p = &m->program;
+    double *factors = mt_program_factor_lines(p, p->stages - 1, c, worker), most = 0;
+    size_t n = (size_t)c->length;
+    (void)in, (void)out, (void)err;
+    for (int i = 0; i < m->n; i++) {
+        const mt_mover *v = &m->mover[i];
+        if (v->stabilising_factor < 0 || v->implicit_factor < 0) continue;
+        for (size_t k = 0; k < n; k++) {
+            double extra = factors[(size_t)v->stabilising_factor * n + k],
+                   all = -factors[(size_t)v->implicit_factor * n + k];
+            if (extra > 0.85 * all) most = fmax(most, extra);
+        }
+    }
+    m->column_tally[c->index] = most;
+    return MT_OK;
+}
+
+/* The third-order formula grows slowly in waves whose damping is nearly all stabilisation, from dt Lambda of
+ * about 8 on (roots of its characteristic polynomial, test_model.c); the second-order formula never does. */
+double mt_step_third_order_limit(mt_model *m, double time) {
+    mt_program *p = &m->program;
+    double most = 0;
+    mt_step_dominate(m, 0.875);
+    mt_step_params(m, time, false);
+    if (mt_kernel_prepare(p->factors[p->stages - 1].kernel, time, NULL)) return INFINITY;
+    if (mt_sweep_columns(m->sweeper, 0, NULL, NULL, 0, NULL, NULL, stabilised_body, m, NULL)) return INFINITY;
+    for (size_t c = 0; c < p->spectrum->columns; c++) most = fmax(most, m->column_tally[c]);
+    return most > 0 ? 5 / most : INFINITY;
 }
 
 /* --- how fast the fastest mode is
