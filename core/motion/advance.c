@@ -174,6 +174,7 @@ mt_status mt_model_options(mt_model *m, const mt_step_options *options, mt_error
     m->options = options ? *options : (mt_step_options){.stepper = MT_STEPPER_DEFAULT, .free_energy = true};
     if (m->options.accuracy <= 0) m->options.accuracy = MT_ACCURACY;
     m->ratio_old = 0;
+    m->most_levels = 2;
     return remember(m, m->options.stepper, err);
 }
 
