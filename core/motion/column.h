@@ -11,10 +11,12 @@ enum {
     MT_LINE_LAMBDA,
     MT_LINE_MIDDLE,
     MT_LINE_CROSS,
-    MT_LINE_L2, /* the partner's */
+    MT_LINE_DAMPING, /* Lambda without what stabilises */
+    MT_LINE_L2,      /* the partner's */
     MT_LINE_LAMBDA2,
     MT_LINE_MIDDLE2,
     MT_LINE_CROSS2,
+    MT_LINE_DAMPING2,
     MT_LINE_WEIGHT,
     MT_LINE_SPARE,
     MT_LINES

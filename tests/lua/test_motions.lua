@@ -90,11 +90,11 @@ local z = g:field("z", cosine(0, 1))
 local mz = model{}
 mz:evolve(z, -z)
 mz:record{ mean(z), every = 1 }
-mz:run{ duration = 1, step = 0.01 }
+mz:run{ duration = 1, step = 0.01, method = "Euler" }
 local fine = amplitude_of(z)*math.exp(1) - 1
-mz:run{ duration = 1, step = 0.1 }
+mz:run{ duration = 1, step = 0.1, method = "Euler" }
 local coarse = amplitude_of(z)*math.exp(2) - 1
-if math.abs(coarse) < 20*math.abs(fine) then error("the second run kept the first one's steps") end
+if math.abs(coarse) < 5*math.abs(fine) then error("the second run kept the first one's steps") end
 
 -- what is refused, and how
 refused("has to be even", filter, c, function(kx, ky) return kx end)
