@@ -327,6 +327,10 @@ static void choose_order(mt_model *m, const mt_attempt *a) {
         m->third_limit = mt_step_third_order_limit(m, m->state.time);
         m->limit_at = m->state.steps + 1;
     }
+    if (m->options.fixed > 0) {
+        m->most_levels = m->options.fixed > m->third_limit ? 1 : 2;
+        return;
+    }
     if (a->order == 3) {
         double second = a->dt * 0.9 / sqrt(fmax(a->lower, 1e-12));
         if (m->dt_next > m->third_limit && second > m->third_limit)
@@ -398,7 +402,7 @@ static void accepted(mt_model *m, const mt_attempt *a) {
     m->state.step_min = fmin(m->state.step_min, a->dt);
     m->state.step_max = fmax(m->state.step_max, a->dt);
     note_state(m);
-    if (m->options.fixed <= 0) choose_order(m, a);
+    choose_order(m, a);
 }
 
 /* One accepted step towards stop. */
