@@ -69,6 +69,16 @@ need("the small seeds are gone" in out, "the hook speaks")
 fraction = column(rows, "fraction")
 need(fraction[-1] > fraction[particles.index(2.0)], "the large ones grow")
 
+amplitudes = {}
+for noise in ("true", "false"):
+    rows, out = run("hot_fluctuations", "cells=64", "ageing=40min", "noise=" + noise, "--replace")
+    mean, variances = column(rows, "mean(x)"), column(rows, "variance(x)")
+    need(max(abs(v - 0.42) for v in mean) < 1e-13, "fluctuations: the mean stays")
+    need(0.015 < variances[0] ** 0.5 < 0.045, "fluctuations: equipartition's size, some per cent in cells of 400 atoms")
+    amplitudes[noise] = column(rows, "amplitude(x)")
+    need(amplitudes[noise][-1] > 3 * amplitudes[noise][0], "fluctuations: the alloy unmixes")
+need(amplitudes["true"][-1] != amplitudes["false"][-1], "fluctuations: noise matters")
+
 # the examples of the bundled models, in short forms
 def value(text, before):
     return float(text.split(before)[1].split()[0].rstrip(",;:%"))
