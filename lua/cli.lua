@@ -19,6 +19,8 @@ mottle: heat treatments of materials that unmix, from a Lua script to a measured
       --replace        replace that folder if it exists
   mottle console                        a prompt for trying things; also lines from a pipe, up to the first error
       --into FOLDER    what its runs leave goes there (default: nothing is written); --replace, --threads, --quiet as above
+  mottle check SCRIPT [name=value ...]  a short stretch again with finer steps and grids: error bars, and whether they suffice
+      --for TIME       its length (default: a tenth of the first run); --into FOLDER, --replace: check.txt and check.csv
   mottle report FOLDER                  makes report.html of a run folder again
   mottle --help, mottle --version
 
@@ -177,6 +179,69 @@ local function console_command(args)
   return require("console").run(o, { tidy = tidy, code = failure_code })
 end
 
+-- One execution of the script up to its first run, on a grid `factor` times finer; f takes the run and what f gives comes back.
+local function up_to_the_run(path, factor, f)
+  local done, result, sandbox = {}, nil, require("sandbox")
+  require("grid").refine, inputs.list, sandbox.leaving = factor, {}, nil
+  function run.check(m, r, o, columns)
+    result = f(m, r, o, columns)
+    sandbox.leaving = done
+    error(done, 0) -- unwinds the script
+  end
+  local chunk = load_script(path)
+  local good, message = xpcall(chunk, function(e) return e end)
+  sandbox.leaving = nil
+  if good then core.fail("the script ran to its end without a run, so there is nothing to check") end
+  if message ~= done then error(message, 0) end
+  return result
+end
+
+local function check_run(path, o)
+  local check = require("check")
+  local length = o["for"] and (require("unit").parse(o["for"]) or core.fail("--for takes a time, with a unit if the script has units, not '" .. o["for"] .. "'"))
+  local first = up_to_the_run(path, 1, function(m, r, options, columns)
+    r.stretch = math.min(length or (r.t1 - r.t0) / 10, r.t1 - r.t0)
+    local b = { m = m, run = r, options = options, columns = columns }
+    if not (r.stretch > 0) then core.fail("--for has to be a positive time") end
+    if m.noisy then core.fail("check: with thermal noise two runs take different paths; compare statistics over seeds instead (or check the script without its noise)") end
+    b.values, b.states = check.in_time(m, r, options, columns)
+    local measure = require("measure")
+    local lambda = measure.wavelength(m.moving[1])
+    local ok, value = pcall(lambda.value)
+    b.lambda = ok and value and value * (measure.unit(lambda) == "nm" and 1e-9 or 1) or nil
+    return b
+  end)
+  local space = {}
+  for i, factor in ipairs(check.grid_factors) do
+    space[i] = up_to_the_run(path, factor, function(m, r, options, columns)
+      r.stretch = first.run.stretch
+      return check.in_space(m, r, options, columns)
+    end)
+  end
+  local rows = check.rows(first.columns, first.values, space, first.options.step)
+  local words, good = check.words(first.m, first.run, first.options, rows, first.states, first.lambda)
+  if o.into then
+    local folder = core.folder(o.into, o.replace and "replace plain" or "plain")
+    core.put(folder, "check.txt", words)
+    core.put(folder, "check.csv", check.table(rows))
+  end
+  core.write(1, words)
+  return good and 0 or 6
+end
+
+local function check_command(args)
+  local o, rest = parse(args, { threads = true, into = true, ["for"] = true }, { replace = true })
+  if not o then return usage_error(rest) end
+  if not rest[1] then return usage_error("check: which script?") end
+  local ok, why = take_inputs(rest)
+  if ok then ok, why = use_threads(o) end
+  if not ok then return usage_error(why) end
+  local good, code = xpcall(check_run, function(e) return e end, rest[1], o)
+  if good then return code end
+  core.write(2, "mottle: " .. tidy(code) .. "\n")
+  return failure_code(code)
+end
+
 local function report_command(args)
   local o, rest = parse(args, {}, {})
   if not o then return usage_error(rest) end
@@ -185,7 +250,7 @@ local function report_command(args)
   return 0
 end
 
-local commands = { run = run_command, plan = plan_command, report = report_command, console = console_command }
+local commands = { run = run_command, plan = plan_command, check = check_command, report = report_command, console = console_command }
 
 return function(args)
   local command = table.remove(args, 1)
@@ -200,6 +265,6 @@ return function(args)
     return 0
   end
   local f = commands[command]
-  if not f then return usage_error("unknown command '" .. command .. "'" .. text.hint(command, { "run", "plan", "report", "console" })) end
+  if not f then return usage_error("unknown command '" .. command .. "'" .. text.hint(command, { "run", "plan", "check", "report", "console" })) end
   return f(args)
 end

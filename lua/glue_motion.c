@@ -61,6 +61,18 @@ static int field_set(lua_State *L) {
     return 0;
 }
 
+/* resample(to, its grid, from, its grid) */
+static int resample(lua_State *L) {
+    mt_error err = {0};
+    mt_field *to = glue_field(L, 1), *from = glue_field(L, 3);
+    glue_grid *g[2] = {glue_grid_at(L, 2), glue_grid_at(L, 4)};
+    for (int i = 0; i < 2; i++)
+        if (!g[i]->sweeper)
+            glue_check(L, mt_sweeper_new(&g[i]->sweeper, g[i]->grid, glue_of(L)->pool, &err), &err);
+    glue_check(L, mt_field_resample(to, g[0]->sweeper, from, g[1]->sweeper, &err), &err);
+    return 0;
+}
+
 /* add_discs(field, centres, radius, width, amount): centres one after the other */
 static int add_discs(lua_State *L) {
     mt_field *f = glue_field(L, 1);
@@ -389,32 +401,15 @@ static int advance(lua_State *L) {
 
 void glue_open_motion(lua_State *L) {
     static const luaL_Reg functions[] = {
-        {"field", new_field},
-        {"field_name", field_name},
-        {"field_set", field_set},
-        {"evaluate", evaluate},
-        {"model", new_model},
-        {"energy", energy},
-        {"conserve", conserve},
-        {"relax", relax},
-        {"evolve", evolve},
-        {"still", still},
-        {"potential", potential},
-        {"describe", describe},
-        {"bytes", bytes},
-        {"growth", growth},
-        {"start", start},
-        {"state", state},
-        {"advance", advance},
-        {"add_discs", add_discs},
-        {"random", random_one},
-        {"couple", couple},
-        {"source", source},
-        {"carry", carry},
-        {"keep_mean", keep_mean},
-        {"step_options", set_options},
-        {"thermal", thermal},
-        {"fluctuations", fluctuations},
+        {"field", new_field},   {"field_name", field_name}, {"field_set", field_set},
+        {"evaluate", evaluate}, {"model", new_model},       {"energy", energy},
+        {"conserve", conserve}, {"relax", relax},           {"evolve", evolve},
+        {"still", still},       {"potential", potential},   {"describe", describe},
+        {"bytes", bytes},       {"growth", growth},         {"start", start},
+        {"state", state},       {"advance", advance},       {"add_discs", add_discs},
+        {"random", random_one}, {"couple", couple},         {"source", source},
+        {"carry", carry},       {"keep_mean", keep_mean},   {"step_options", set_options},
+        {"thermal", thermal},   {"resample", resample},     {"fluctuations", fluctuations},
         {NULL, NULL},
     };
     static const luaL_Reg field_meta[] = {{"__gc", free_field}, {"__close", free_field}, {NULL, NULL}};

@@ -44,8 +44,29 @@ local function check_wall(w, axis)
     type(w) == "string" and ('"' .. w .. '"') or options.kind(w)))
 end
 
+-- mottle check runs a script on finer grids: cells multiplied, the box and the starts as the script has them.
+M.refine = 1
+
+local function refined(o)
+  local cells, spacing = {}, {}
+  for a, n in ipairs(type(o.cells) == "table" and o.cells or { o.cells }) do
+    local h = type(o.spacing) == "table" and o.spacing[a] or o.spacing
+    cells[a] = n == 1 and 1 or math.floor(n * M.refine + 0.5)
+    spacing[a] = h * n / cells[a]
+  end
+  return { cells = cells, spacing = spacing, walls = o.walls }
+end
+
 ---A box of cells. grid{ cells = {nx, ny}, spacing = h, walls = "periodic" or "mirror" or a list per axis }
 function M.grid(t)
+  if M.refine == 1 then return M.plain(t) end
+  local coarse = M.plain(t)
+  local g = M.plain(refined(t))
+  g.coarse, g.twin = coarse, {}
+  return g
+end
+
+function M.plain(t)
   local o = options.read(t, "grid", { { "cells", "any", required = true }, { "spacing", "any", required = true },
     { "walls", "any", default = "periodic" } })
   local cells = type(o.cells) == "table" and o.cells or { o.cells }
@@ -209,10 +230,28 @@ function M.place(t)
   end)
 end
 
+-- On a refined grid the start is made on the script's own and taken over wave by wave, so that both start alike.
+local function set_refined(f, start, g)
+  local twin = g.twin[f]
+  if not twin then
+    twin = core.field(g.coarse.core, core.field_name(f))
+    g.twin[f], M.of[twin] = twin, g.coarse
+    table.insert(g.coarse.fields, twin)
+  end
+  start = as_start(start)
+  local rest = start.rest
+  if core.is_expr(rest) then
+    for _, x in ipairs(g.fields) do if g.twin[x] then rest = core.replace(rest, x, g.twin[x]) end end
+  end
+  M.set(twin, setmetatable({ parts = start.parts, rest = rest }, Start))
+  core.resample(f, g.core, twin, g.coarse.core)
+end
+
 ---Gives a field the values of a start.
 function M.set(f, start)
   local g = M.of[f]
   if not g then core.fail("set: expected a field first") end
+  if g.coarse then return set_refined(f, start, g) end
   start = as_start(start)
   if not options.kind(start.rest):find("number") and not core.is_expr(start.rest) then
     core.fail("field '" .. core.field_name(f) .. "': expected a number, a formula of position and noise, or a starting state, found " ..

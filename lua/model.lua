@@ -34,7 +34,7 @@ function M.model(t)
   end
   if o.energy and not core.dim(o.energy) then core.fail("model: the energy contains no field") end
   local m = { energy_density = o.energy or false, moving = {}, still = {}, given = {}, every_hooks = {}, at_hooks = {}, when_hooks = {}, pictures = {},
-    saves = {}, tabulations = {}, recorded = false, started = false, line = core.where(), last_record = false, last_stage = false, ledger = false,
+    saves = {}, tabulations = {}, recorded = false, started = false, noisy = false, line = core.where(), last_record = false, last_stage = false, ledger = false,
     ledger_head = {}, rows = {}, drawn = {}, stages = {}, schedule = false, wall = 0 }
   if o.energy then
     m.grid = grids.find(o.energy)

@@ -114,6 +114,7 @@ function M.more(m, what, fields, t, matrix)
   if o.thermal_noise then
     if not matrix[1] then core.fail(what .. ": thermal noise follows from a mobility or rate; a field with a right-hand side of its own has none") end
     add_noise(m, what, fields, matrix, o.thermal_noise)
+    rawset(m, "noisy", true)
   end
 end
 

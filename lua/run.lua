@@ -20,6 +20,9 @@ measure.clock = function()
   return time
 end
 
+---Measurements are of this model's time from now on.
+function M.watch(m) clock_model = m end
+
 local function real() return units.used end
 
 local time_scale, time_unit = 1, ""
@@ -351,6 +354,7 @@ function M.run(m, o)
   inputs.check()
   local run = prepare(m, o)
   if M.plan then M.plan(m, run, o) end -- does not come back
+  if M.check then M.check(m, run, o, m.recorded and m.recorded.columns or default_columns(m)) end
   if not M.folder and M.open_folder then M.open_folder() end
   local fresh = not m.started
   local steps = { accuracy = o.accuracy, step = o.step, longest = o.longest, method = o.method_number or 0 }

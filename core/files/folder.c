@@ -196,9 +196,9 @@ done:
 
 /* ---- what a run folder holds ---- */
 
-static const char *const kept_files[] = {"ledger.csv",  "journal",      "state",
-                                         "report.html", "summary.json", "script.lua",
-                                         "plan.txt",    "growth.csv",   "growth.svg"};
+static const char *const kept_files[] = {"ledger.csv",   "journal",    "state",    "report.html",
+                                         "summary.json", "script.lua", "plan.txt", "growth.csv",
+                                         "growth.svg",   "check.txt",  "check.csv"};
 static const struct {
     const char *name;
     const char *endings[2]; /* "" stands for any */

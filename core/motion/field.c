@@ -1,6 +1,7 @@
 #include "core/motion/field.h"
 
 #include <math.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include "core/base/memory.h"
@@ -153,6 +154,82 @@ mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, i
     if (st) return mt_context(err, st, "field '%s'", field->symbol->name);
     mt_field_touch(field);
     return MT_OK;
+}
+
+/* --- another grid
+ * --------------------------------------------------------------------------------------------------------
+ */
+
+static bool same_box(const mt_grid *a, const mt_grid *b) {
+    bool same = a->dim == b->dim;
+    for (int i = 0; i < 3 && same; i++) {
+        double la = a->n[i] * a->h[i], lb = b->n[i] * b->h[i];
+        same = a->wall[i] == b->wall[i] && (i >= a->dim || fabs(la - lb) <= 1e-9 * la);
+    }
+    return same;
+}
+
+/* Stored mode of s for the signed mode m of an axis, or -1. */
+static int stored_mode(const mt_spectrum *s, int axis, int m) {
+    int n = s->grid->n[axis];
+    if (s->grid->wall[axis] == MT_MIRROR || axis == s->half) return m >= 0 && m < s->modes[axis] ? m : -1;
+    if (2 * abs(m) >= n && m != 0) return -1;
+    return m >= 0 ? m : m + n;
+}
+
+static int signed_mode(const mt_spectrum *s, int axis, int mode) {
+    int n = s->grid->n[axis];
+    return s->grid->wall[axis] == MT_MIRROR || axis == s->half || 2 * mode < n ? mode : mode - n;
+}
+
+/* Periodic axes count from the centre of their first cell, which lies elsewhere on the other grid. */
+static double phase_of(const mt_spectrum *to, const mt_spectrum *from, const int mode[3]) {
+    double phase = 0;
+    for (int a = 0; a < to->grid->dim; a++)
+        if (to->grid->wall[a] == MT_PERIODIC)
+            phase += to->k[a][mode[a]] * 0.5 * (to->grid->h[a] - from->grid->h[a]);
+    return phase;
+}
+
+static void copy_modes(const mt_spectrum *to, const mt_spectrum *from, double *out, const double *in) {
+    for (size_t j = 0; j < to->columns; j++) {
+        int mode[3], there[3] = {0, 0, 0};
+        mt_spectrum_column(to, j, mode);
+        for (int i = 0; i < to->length; i++) {
+            bool found = true;
+            mode[to->outer] = i;
+            for (int a = 0; a < 3 && found; a++) {
+                there[a] = stored_mode(from, a, signed_mode(to, a, mode[a]));
+                found = there[a] >= 0;
+            }
+            if (!found) continue;
+            size_t column = 0, step = 1, width = to->complex ? 2 : 1;
+            for (int a = 0; a < 3; a++)
+                if (a != from->outer) column += (size_t)there[a] * step, step *= (size_t)from->modes[a];
+            const double *v = in + column * from->stride + (size_t)there[from->outer] * width;
+            double *w = out + j * to->stride + (size_t)i * width, phase = phase_of(to, from, mode);
+            w[0] = to->complex ? v[0] * cos(phase) - v[1] * sin(phase) : v[0];
+            if (to->complex) w[1] = v[0] * sin(phase) + v[1] * cos(phase);
+        }
+    }
+}
+
+mt_status mt_field_resample(mt_field *to, mt_sweeper *to_sweeper, const mt_field *from,
+                            mt_sweeper *from_sweeper, mt_error *err) {
+    const mt_spectrum *a = mt_sweeper_spectrum(to_sweeper), *b = mt_sweeper_spectrum(from_sweeper);
+    double *in = NULL, *out = NULL, *work = NULL;
+    size_t wa = mt_sweeper_work_doubles(to_sweeper), wb = mt_sweeper_work_doubles(from_sweeper);
+    if (!same_box(to->grid, from->grid) || a->outer != b->outer || a->half != b->half)
+        return mt_fail(err, MT_EINPUT, "field '%s': the other grid is not of the same box", to->symbol->name);
+    mt_status st = mt_new(&in, b->doubles, sizeof(double), "a spectrum", err);
+    if (!st) st = mt_new(&out, a->doubles, sizeof(double), "a spectrum", err);
+    if (!st) st = mt_new(&work, wa > wb ? wa : wb, sizeof(double), "a spectrum", err);
+    if (!st) st = mt_transform_forward(from_sweeper, from->values, 0, in, work, err);
+    if (!st) copy_modes(a, b, out, in);
+    if (!st) st = mt_transform_inverse(to_sweeper, out, 0, to->values, work, err);
+    mt_free(in), mt_free(out), mt_free(work);
+    if (!st) mt_field_touch(to);
+    return st;
 }
 
 /* --- discs

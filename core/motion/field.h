@@ -33,6 +33,12 @@ MT_API mt_status mt_evaluate(mt_sweeper *sweeper, const mt_expr *e, int n, mt_fi
 MT_API mt_status mt_field_set(mt_field *field, mt_sweeper *sweeper, const mt_expr *e, int n,
                               mt_field *const fields[], double time, mt_error *err) MT_MUST_USE;
 
+/* to := the trigonometric polynomial of `from`, taken at the cells of another grid over the same box (same
+ * walls and lengths): exact where the other grid is finer. Each sweeper belongs to its field's grid. Then
+ * mt_field_touch. EINPUT where the boxes differ. */
+MT_API mt_status mt_field_resample(mt_field *to, mt_sweeper *to_sweeper, const mt_field *from,
+                                   mt_sweeper *from_sweeper, mt_error *err) MT_MUST_USE;
+
 /* Adds smooth-edged discs (spheres, bars) to the values: amount / 2 (1 - tanh((r - radius) / width)) about
  * each centre, r the distance to its nearest image across periodic walls. centres: count * dim coordinates.
  * Then mt_field_touch. */
