@@ -11,12 +11,14 @@ enum {
     MT_LINE_LAMBDA,
     MT_LINE_MIDDLE,
     MT_LINE_CROSS,
-    MT_LINE_DAMPING, /* Lambda without what stabilises */
+    MT_LINE_INVERSE, /* 1 / (a0 - dt Lambda) */
+    MT_LINE_FILTER,  /* of the error */
     MT_LINE_L2,      /* the partner's */
     MT_LINE_LAMBDA2,
     MT_LINE_MIDDLE2,
     MT_LINE_CROSS2,
-    MT_LINE_DAMPING2,
+    MT_LINE_INVERSE2,
+    MT_LINE_FILTER2,
     MT_LINE_WEIGHT,
     MT_LINE_SPARE,
     MT_LINES

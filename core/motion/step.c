@@ -82,7 +82,7 @@ static scheme make_scheme(const mt_model *m, double dt, int implicit, int predic
  * ---------------------------------------------------------------------------------------- */
 
 typedef struct lines {
-    const double *l, *lambda, *middle, *damping,
+    const double *l, *lambda, *middle, *inverse, *filter,
         *cross; /* per double of the column; cross: the partner's spectrum times it */
     const double *rn, *u1, *r1, *u2, *r2; /* R; u-, R-, u--, R-- (of the present state where the method uses
                                              none: never what a rejected step left) */
@@ -105,7 +105,7 @@ static inline __attribute__((always_inline)) double right_side(const scheme *s, 
 static inline __attribute__((always_inline)) void judge_one(const scheme *s, const lines *x, double weight,
                                                             double up, size_t i, double *e2, double *l2,
                                                             double *d2, double *n2) {
-    double un = x->u[i], rn = x->rn[i], q = 1 / (1 - s->dt * x->damping[i]) / sqrt(1 - s->dt * x->lambda[i]);
+    double un = x->u[i], rn = x->rn[i], q = x->filter[i];
     double slope = s->h[0] * rn + s->h[1] * x->r1[i] + s->h[2] * x->r2[i] +
                    x->middle[i] * (s->h[0] * un + s->h[1] * x->u1[i] + s->h[2] * x->u2[i]);
     double miss = up - un - s->dt * slope, e = miss * q, d = up - un;
@@ -122,7 +122,7 @@ static inline __attribute__((always_inline)) void judge_one(const scheme *s, con
 static inline __attribute__((always_inline)) void update_one(const scheme *s, const lines *x, const double *w,
                                                              size_t i, double *e2, double *l2, double *d2,
                                                              double *n2) {
-    double up = right_side(s, x, i) / (s->a[0] - s->dt * x->lambda[i]);
+    double up = right_side(s, x, i) * x->inverse[i];
     judge_one(s, x, w[i], up, i, e2, l2, d2, n2);
 }
 
@@ -180,7 +180,8 @@ typedef struct column_ctx {
 } column_ctx;
 
 static lines from(lines x, size_t skip) {
-    x.l += skip, x.lambda += skip, x.middle += skip, x.damping += skip, x.cross += skip;
+    x.l += skip, x.lambda += skip, x.middle += skip, x.cross += skip;
+    x.inverse += skip, x.filter += skip;
     x.rn += skip, x.u1 += skip, x.r1 += skip, x.u2 += skip, x.r2 += skip;
     x.u += skip, x.to += skip, x.r += skip;
     return x;
@@ -229,6 +230,39 @@ static void update_pair(const column_ctx *x, const mt_mover *v, const mt_mover *
     for (int i = 0; i < 2; i++) t[i] = plus(mean[i], t[i]);
 }
 
+MT_VECTOR_CLONES static void ratio_line(const scheme *s, size_t n, const double *lambda, const double *extra,
+                                        double *inverse, double *filter) {
+    for (size_t i = 0; i < n; i++) {
+        double im = lambda[i], damping = extra ? fmin(0, im + extra[i]) : im;
+        inverse[i] = 1 / (s->a[0] - s->dt * im);
+        filter[i] = 1 / ((1 - s->dt * damping) * sqrt(1 - s->dt * im));
+    }
+}
+
+static void double_up(const mt_program *p, size_t n, const double *from, double *to) {
+    if (!p->spectrum->complex)
+        memcpy(to, from, n * sizeof *to);
+    else
+        for (size_t i = 0; i < n; i++) to[2 * i] = to[2 * i + 1] = from[i];
+}
+
+/* What is divided by, once for each mode: complex values come in twos. Stabilisation counts as damping for
+ * conserved fields only (see the top). */
+static void ratios(const column_ctx *x, const mt_column *c, const mt_lines *at, const mt_mover *v,
+                   double *inverse, double *filter) {
+    const mt_program *p = &x->m->program;
+    size_t n = (size_t)c->length;
+    bool apart = v->stabilising_factor >= 0 && v->motion != MT_MOTION_CONSERVE;
+    const double *extra = apart ? at->factors + (size_t)v->stabilising_factor * n : NULL;
+    double *a = at->at[MT_LINE_SPARE], *b = a + n;
+    if (v->implicit_factor < 0) { /* nothing implicit */
+        for (size_t i = 0; i < at->doubles; i++) inverse[i] = 1 / x->s.a[0], filter[i] = 1;
+        return;
+    }
+    ratio_line(&x->s, n, at->factors + (size_t)v->implicit_factor * n, extra, a, b);
+    double_up(p, n, a, inverse), double_up(p, n, b, filter);
+}
+
 /* The lines of mover i, in the places of the first or the second of a pair. */
 static lines lines_of(const column_ctx *x, const mt_column *c, const mt_lines *at, int i, int second) {
     const mt_program *p = &x->m->program;
@@ -236,8 +270,8 @@ static lines lines_of(const column_ctx *x, const mt_column *c, const mt_lines *a
     int shift = second ? MT_LINE_L2 : MT_LINE_L;
     double *l = at->at[MT_LINE_L + shift], *lambda = at->at[MT_LINE_LAMBDA + shift],
            *middle = at->at[MT_LINE_MIDDLE + shift], *cross = at->at[MT_LINE_CROSS + shift],
-           *damping = at->at[MT_LINE_DAMPING + shift];
-    lines ln = {.l = l, .lambda = lambda, .middle = l, .damping = lambda, .cross = cross};
+           *inverse = at->at[MT_LINE_INVERSE + shift], *filter = at->at[MT_LINE_FILTER + shift];
+    lines ln = {.l = l, .lambda = lambda, .middle = l, .inverse = inverse, .filter = filter, .cross = cross};
     ln.u = v->u + c->offset, ln.to = mt_next_u(x->m, v) + c->offset, ln.r = mt_next_r(x->m, v) + c->offset;
     ln.rn = x->fresh ? at->rhs + (size_t)i * at->line : ln.r;
     ln.u1 = x->levels > 0 ? v->past_u[0] + c->offset : ln.u;
@@ -247,11 +281,7 @@ static lines lines_of(const column_ctx *x, const mt_column *c, const mt_lines *a
     mt_column_spread(p, at->factors, v->linear_factor, c, l);
     mt_column_spread(p, at->factors, v->implicit_factor, c, lambda);
     if (v->partner >= 0) mt_column_spread(p, at->factors, v->cross_factor, c, cross);
-    if (v->stabilising && v->motion != MT_MOTION_CONSERVE) {
-        mt_column_spread(p, at->factors, v->stabilising_factor, c, damping);
-        for (size_t j = 0; j < at->doubles; j++) damping[j] = fmin(0, lambda[j] + damping[j]);
-        ln.damping = damping;
-    }
+    ratios(x, c, at, v, inverse, filter);
     if (x->moving) {
         mt_column_spread(p, at->middle, i, c, middle);
         ln.middle = middle;
