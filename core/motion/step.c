@@ -139,6 +139,15 @@ MT_VECTOR_CLONES static sums update_line(const scheme *s, const lines *x, const 
     return t;
 }
 
+/* A fixed step needs no estimate. */
+MT_VECTOR_CLONES static void plain_line(const scheme *s, const lines *x, size_t n) {
+    for (size_t i = 0; i < n; i++) {
+        double up = right_side(s, x, i) * x->inverse[i], rn = x->rn[i];
+        x->to[i] = up;
+        x->r[i] = rn;
+    }
+}
+
 /* Two fields coupled by linear terms: a 2 x 2 block per mode. */
 static inline __attribute__((always_inline)) void update_two(const scheme *s, const lines *x, const lines *y,
                                                              const double *w, size_t i, double e[2],
@@ -212,6 +221,10 @@ static void update_single(const column_ctx *x, const mt_mover *v, const lines *l
         mean = hold_mean(v, ln, k, update_line(&x->s, ln, w, skip));
     }
     lines rest = from(*ln, skip);
+    if (x->m->options.fixed > 0) {
+        plain_line(&x->s, &rest, c->doubles - skip);
+        return;
+    }
     *t = plus(mean, update_line(&x->s, &rest, w + skip, c->doubles - skip));
 }
 
